@@ -1,0 +1,7 @@
+"""`python -m rtid` is the command `rtid`."""
+
+import sys
+
+from rtid.cli.main import entry
+
+sys.exit(entry())

@@ -1,0 +1,1 @@
+"""The manual as Markdown, a file per topic; `rtid guide` prints it."""
