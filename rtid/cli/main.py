@@ -31,9 +31,9 @@ BLAS_THREADS = ("OPENBLAS_NUM_THREADS", "OMP_NUM_THREADS", "MKL_NUM_THREADS")
 class Parser(argparse.ArgumentParser):
     """Errors are one line; help keeps the line breaks of its example."""
 
-    def __init__(self, *args: Any, **options: Any) -> None:
-        options.setdefault("formatter_class", argparse.RawDescriptionHelpFormatter)
-        super().__init__(*args, allow_abbrev=False, **options)
+    def __init__(self, **options: Any) -> None:
+        ours: dict[str, Any] = {"formatter_class": argparse.RawDescriptionHelpFormatter, "allow_abbrev": False}
+        super().__init__(**(ours | options))
 
     def error(self, message: str) -> NoReturn:
         raise UsageError(f"{message}; see '{self.prog} --help'")
@@ -77,7 +77,7 @@ def _run(command: str | None, arguments: list[str]) -> int:
         parser.parse_args(arguments)
         parser.error(f"no command given: {', '.join(COMMANDS)}")
     module = importlib.import_module(f"rtid.cli.{command}")  # only this one: the others' packages stay unloaded
-    subparsers = parser.add_subparsers(dest="command")
+    subparsers = parser.add_subparsers(dest="command", prog=parser.prog)
     module.add(subparsers)
     chosen = subparsers.choices[command]
     _add_debug(chosen, default=argparse.SUPPRESS)

@@ -15,7 +15,20 @@ from rtid.cli.main import COMMANDS, main
 from rtid.errors import ConfigError, MissingInput, RtidError, UsageError
 
 NOT_IN_THIS_VERSION = (
-    "survey status watch snapshot retune rebaseline hold resume ack shelve unshelve note excite report".split()
+    "survey",
+    "status",
+    "watch",
+    "snapshot",
+    "retune",
+    "rebaseline",
+    "hold",
+    "resume",
+    "ack",
+    "shelve",
+    "unshelve",
+    "note",
+    "excite",
+    "report",
 )
 
 
