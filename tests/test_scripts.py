@@ -125,7 +125,7 @@ def test_a_folder_that_cannot_be_written(script: Script, path: Path) -> None:
         ("WARNING: NewConnectionError(...)", "connect this computer to the network"),
         ("ERROR: Could not find a version that satisfies hatchling", "connect this computer to the network"),
         ("ERROR: [Errno 28] No space left on device", "make room"),
-        ("ERROR: the wheel is broken", "pip failed: ERROR: the wheel is broken; to see all:"),
+        ("ERROR: the wheel is broken", "pip failed (ERROR: the wheel is broken); to see all:"),
     ],
 )
 def test_an_installation_that_fails(script: Script, path: Path, said: str, mend: str) -> None:

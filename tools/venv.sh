@@ -59,7 +59,7 @@ why_not_installed() {
         *'No space left'*)
             echo "no space left on the disk of $venv: make room (about 200 MB) and start again" ;;
         *)
-            echo "pip failed: $(printf '%s\n' "$1" | sed -n '/ERROR/{p;q;}'); to see all:" \
+            echo "pip failed ($(printf '%s\n' "$1" | sed -n '/E[Rr][Rr][Oo][Rr]:/{s/^ *//;h;}; ${x;p;}')); to see all:" \
                 "$venv/bin/python -m pip install -e $project" ;;
     esac
 }
