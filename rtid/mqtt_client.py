@@ -7,16 +7,19 @@ from __future__ import annotations
 
 import logging
 import os
+import sys
 from pathlib import Path
 
 from paho.mqtt.client import Client, MQTTv5
 from paho.mqtt.enums import CallbackAPIVersion
+from paho.mqtt.reasoncodes import ReasonCode
 
 from rtid.errors import InputOutputError, MissingInput
 from rtid.settings import Broker, Tls
 
 KEEPALIVE_S = 30
 RECONNECT_S = (1, 5)  # first and longest wait; paho's own 120 s keep a node away after the broker is back
+SESSION_TAKEN_OVER = 0x8E  # MQTT 5.0, section 3.14.2.1
 QUEUED_MESSAGES = 1000  # of QoS 1 and 2 while the broker is away; paho's own queue has no bound
 
 
@@ -50,7 +53,7 @@ def _password(path: str | None) -> str | None:
     try:
         return _credential(Path(path)).read_text(encoding="utf-8").rstrip("\r\n")
     except FileNotFoundError:
-        raise MissingInput(f"{path}: no such file; create it with the broker's password or mend password_file") from None
+        raise MissingInput(f"{path}: no such file; put the broker's password there or mend password_file") from None
     except OSError as error:
         raise InputOutputError(f"{path}: the broker's password cannot be read: {error.strerror}") from None
     except UnicodeDecodeError:
@@ -71,6 +74,20 @@ def _encrypt(client: Client, tls: Tls) -> None:
     try:  # an empty pass phrase: OpenSSL would ask for it on the terminal
         client.tls_set(ca_certs=tls.ca_file, certfile=tls.cert_file, keyfile=tls.key_file, keyfile_password="")
     except (OSError, ValueError) as error:
-        raise InputOutputError(
-            f"{', '.join(files)}: not usable for TLS ({error}); they must be readable PEM files, the key without pass phrase"
-        ) from None
+        names = ", ".join(files)
+        raise InputOutputError(f"{names}: not usable for TLS ({error}); PEM files, key without pass phrase") from None
+
+
+def why_unreachable(broker: Broker) -> str:
+    """What kept the client from connecting, in one line. Only of use inside `on_connect_fail`."""
+    error = sys.exc_info()[1]  # paho calls back while it handles the error
+    text = f"the broker at {broker.host}:{broker.port} cannot be reached ({error}); trying again"
+    return f"{text}. Is the clock of this computer set?" if "not yet valid" in str(error) else text
+
+
+def why_disconnected(broker: Broker, reason: ReasonCode) -> str:
+    """Why a connection ended, in one line."""
+    address = f"{broker.host}:{broker.port}"
+    if reason.value == SESSION_TAKEN_OVER:
+        return f"another client with the same client id took over the connection to {address}: give each node its name"
+    return f"the connection to the broker at {address} ended ({reason})"
