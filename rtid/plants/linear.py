@@ -31,25 +31,40 @@ class LinearPlant:
         return delayed(a, b, period_s=period_s, dead_time_s=self.dead_time_s)
 
 
-def first_order(gain: float, time_constant_s: float, *, dead_time_s: float = 0.0, offset: float = 0.0,
-                noise: float = 0.0) -> LinearPlant:
+def first_order(
+    gain: float, time_constant_s: float, *, dead_time_s: float = 0.0, offset: float = 0.0, noise: float = 0.0
+) -> LinearPlant:
     return LinearPlant(gain, (time_constant_s,), dead_time_s, offset, noise)
 
 
-def second_order(gain: float, natural_frequency: float, damping_ratio: float, *, dead_time_s: float = 0.0,
-                 offset: float = 0.0, noise: float = 0.0) -> LinearPlant:
+def second_order(
+    gain: float,
+    natural_frequency: float,
+    damping_ratio: float,
+    *,
+    dead_time_s: float = 0.0,
+    offset: float = 0.0,
+    noise: float = 0.0,
+) -> LinearPlant:
     """`natural_frequency` in rad/s, undamped."""
     lags = (2.0 * damping_ratio / natural_frequency, 1.0 / natural_frequency**2)
     return LinearPlant(gain, lags, dead_time_s, offset, noise)
 
 
-def two_lags(gain: float, slow_s: float, fast_s: float, *, dead_time_s: float = 0.0, offset: float = 0.0,
-             noise: float = 0.0) -> LinearPlant:
+def two_lags(
+    gain: float, slow_s: float, fast_s: float, *, dead_time_s: float = 0.0, offset: float = 0.0, noise: float = 0.0
+) -> LinearPlant:
     return LinearPlant(gain, (slow_s + fast_s, slow_s * fast_s), dead_time_s, offset, noise)
 
 
-def simulate(plant: LinearPlant, inputs: Array, *, period_s: float, seed: int = 0,
-             changes: Mapping[int, LinearPlant] | None = None) -> Array:
+def simulate(
+    plant: LinearPlant,
+    inputs: Array,
+    *,
+    period_s: float,
+    seed: int = 0,
+    changes: Mapping[int, LinearPlant] | None = None,
+) -> Array:
     """Measured output, one value per row of `inputs` (rows,).
 
     Row k holds the output at its tick and the input applied from then on. Before the first row the plant rests at the

@@ -30,8 +30,11 @@ class Motor:
 
     def aged(self, *, warmer_k: float = 0.0, friction_factor: float = 1.0) -> Motor:
         """The same motor with a warmer winding and rougher bearings."""
-        return replace(self, resistance=self.resistance * (1.0 + COPPER_PER_KELVIN * warmer_k),
-                       friction=self.friction * friction_factor)
+        return replace(
+            self,
+            resistance=self.resistance * (1.0 + COPPER_PER_KELVIN * warmer_k),
+            friction=self.friction * friction_factor,
+        )
 
     @property
     def gain(self) -> float:
@@ -66,8 +69,12 @@ class Motor:
 
     def held(self, period_s: float) -> tuple[Array, Array]:
         """Discrete (Ad, Bd) of the state (current, speed) with held inputs (voltage, load torque)."""
-        a = np.array([[-self.resistance / self.inductance, -self.back_emf / self.inductance],
-                      [self.torque / self.inertia, -self.friction / self.inertia]])
+        a = np.array(
+            [
+                [-self.resistance / self.inductance, -self.back_emf / self.inductance],
+                [self.torque / self.inertia, -self.friction / self.inertia],
+            ]
+        )
         b = np.array([[1.0 / self.inductance, 0.0], [0.0, -1.0 / self.inertia]])
         return held(a, b, period_s)
 

@@ -1,0 +1,50 @@
+"""The one way through the house: readings become rows, rows become reports. Live service and replay both walk it."""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Iterable, Mapping
+
+from rtid import settings
+from rtid.intake.grid import Grid
+from rtid.intake.reading import Reading
+from rtid.loop import Loop
+from rtid.report import Report
+from rtid.rows import Rows
+
+
+class Pipeline:
+    """The grids and loops of one node; every report goes to `deliver`, in the order in which it came about.
+
+    `rows` counts the grid rows over all loops. Not safe for threads: one worker owns it.
+    `stamp` is a label in seconds since 1970.
+    """
+
+    def __init__(self, told: Mapping[str, settings.Loop], deliver: Callable[[Report], None]) -> None:
+        self.loops = {name: Loop(loop) for name, loop in told.items()}
+        self.grids = {name: Grid(loop) for name, loop in told.items()}
+        self.rows = 0
+        self._deliver = deliver
+        self._wanted = {name: frozenset(loop.signals) for name, loop in told.items()}
+
+    def feed(self, reading: Reading, stamp: float) -> list[str]:
+        """Hand a reading to the loops that use it; their names."""
+        names = [name for name, wanted in self._wanted.items() if not wanted.isdisjoint(reading.values)]
+        for name in names:
+            self._advance(name, self.grids[name].feed(reading, stamp))
+        return names
+
+    def flush(self, name: str, stamp: float) -> None:
+        """Close the open block of a loop early."""
+        self._advance(name, self.grids[name].flush(stamp))
+
+    def silence(self, name: str, *, seconds: float, stamp: float) -> None:
+        """Tell a loop that no reading came for so long."""
+        self.flush(name, stamp)
+        report = self.loops[name].silence(seconds, stamp)
+        if report is not None:
+            self._deliver(report)
+
+    def _advance(self, name: str, blocks: Iterable[Rows]) -> None:
+        for rows in blocks:
+            self.rows += len(rows.values)
+            self._deliver(self.loops[name].advance(rows))

@@ -1,0 +1,24 @@
+"""Which loops have gone without readings for too long, by the monotonic clock."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+
+
+class SilenceWatch:
+    """`due` names a loop when its readings have been away for its `stale_after_s`, then once per `stale_after_s`."""
+
+    def __init__(self, stale_after_s: Mapping[str, float], now: float) -> None:
+        self._after = dict(stale_after_s)
+        self._heard = dict.fromkeys(self._after, now)
+        self._said = dict.fromkeys(self._after, now)
+
+    def heard(self, loop: str, now: float) -> None:
+        self._heard[loop] = self._said[loop] = now
+
+    def due(self, now: float) -> list[tuple[str, float]]:
+        """(loop, seconds without a reading) of those that are to be told now."""
+        late = [name for name, after in self._after.items() if now - self._said[name] >= after]
+        for name in late:
+            self._said[name] = now
+        return [(name, now - self._heard[name]) for name in late]
