@@ -1,0 +1,102 @@
+"""The manual and the program cannot part: keys, commands, topics and alarms are compared with what the program has."""
+
+from __future__ import annotations
+
+import argparse
+import importlib
+import re
+from collections.abc import Iterator
+from typing import Any
+
+import pytest
+
+from rtid import schemas
+from rtid.cli.guide import TOPICS, page
+from rtid.cli.main import COMMANDS, Parser, main
+
+
+def keys(schema: Any) -> Iterator[str]:
+    """Every key that a JSON Schema names, at any depth."""
+    if isinstance(schema, dict):
+        yield from schema.get("properties", {})
+        for below in schema.values():
+            yield from keys(below)
+    elif isinstance(schema, list):
+        for below in schema:
+            yield from keys(below)
+
+
+def named(text: str) -> set[str]:
+    """Every word that stands in code marks or in an indented example."""
+    marked = re.findall(r"`([^`]+)`", text) + re.findall(r"^ {4}.*$", text, flags=re.MULTILINE)
+    return {word for piece in marked for word in re.findall(r"\w+", piece)}
+
+
+def options(command: str) -> set[str]:
+    subparsers = Parser(prog="rtid").add_subparsers()
+    importlib.import_module(f"rtid.cli.{command}").add(subparsers)
+    actions: list[argparse.Action] = subparsers.choices[command]._actions
+    return {flag for action in actions for flag in action.option_strings if flag.startswith("--")} - {"--help"}
+
+
+def section(command: str) -> str:
+    sections = page("commands").split("\n## ")
+    return next(text for text in sections if text.startswith(f"rtid {command}"))
+
+
+def test_the_list_names_every_topic_with_its_title(capsys: pytest.CaptureFixture[str]) -> None:
+    assert main(["guide"]) == 0
+    lines = capsys.readouterr().out.splitlines()[1:]
+    assert [line.split()[0] for line in lines] == list(TOPICS)
+    assert all(len(line.split()) > 3 for line in lines)
+
+
+@pytest.mark.parametrize("topic", TOPICS)
+def test_a_topic_is_printed_as_it_stands(topic: str, capsys: pytest.CaptureFixture[str]) -> None:
+    assert main(["guide", topic]) == 0
+    said = capsys.readouterr().out
+    assert said == page(topic)
+    assert said.startswith("# ")
+    assert said.endswith("\n")
+
+
+@pytest.mark.parametrize("topic", TOPICS)
+def test_a_page_refers_only_to_pages_and_commands_that_exist(topic: str) -> None:
+    text = page(topic)
+    assert set(re.findall(r"rtid guide ([a-z]+)", text)) <= set(TOPICS)
+    assert set(re.findall(r"(?:^ {4}|`)rtid ([a-z]+)", text, flags=re.MULTILINE)) <= set(COMMANDS)
+
+
+def test_an_unknown_topic_gets_the_nearest_one(capsys: pytest.CaptureFixture[str]) -> None:
+    assert main(["guide", "configurations"]) == 64
+    said = capsys.readouterr().err
+    assert "nearest: configuration;" in said
+    assert said.count("\n") == 1
+
+
+def test_every_key_of_the_configuration_is_explained() -> None:
+    known = set(keys(schemas.load("configuration")))
+    assert {"node", "period_s", "memory_s", "password_file"} <= known
+    assert known - named(page("configuration")) == set()
+
+
+def test_every_alarm_of_the_configuration_is_explained() -> None:
+    alarms = re.findall(r"^\| `(\w+)` \|", page("drift"), flags=re.MULTILINE)
+    assert len(alarms) == len(set(alarms)) == 15
+
+
+@pytest.mark.parametrize("command", COMMANDS)
+def test_every_command_and_option_is_explained(command: str) -> None:
+    text = section(command)
+    assert {option for option in options(command) if option not in text} == set()
+
+
+@pytest.mark.parametrize("command", COMMANDS)
+def test_no_option_is_explained_that_does_not_exist(command: str) -> None:
+    assert set(re.findall(r"--[a-z][a-z-]*", section(command))) <= options(command)
+
+
+@pytest.mark.parametrize("name", ["model", "drift", "health", "event", "snapshot", "status"])
+def test_every_field_that_is_published_is_explained(name: str) -> None:
+    published = schemas.load(name)
+    assert set(published["properties"]) - named(page("topics")) - named(page("model")) == set()
