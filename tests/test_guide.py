@@ -80,9 +80,9 @@ def test_every_key_of_the_configuration_is_explained() -> None:
     assert known - named(page("configuration")) == set()
 
 
-def test_every_alarm_of_the_configuration_is_explained() -> None:
-    alarms = re.findall(r"^\| `(\w+)` \|", page("drift"), flags=re.MULTILINE)
-    assert len(alarms) == len(set(alarms)) == 15
+def test_every_alarm_is_explained() -> None:
+    explained = re.findall(r"^\| `(\w+)` \|", page("drift"), flags=re.MULTILINE)
+    assert sorted(explained) == sorted(schemas.load("event")["$defs"]["alarm"]["enum"])
 
 
 @pytest.mark.parametrize("command", COMMANDS)
@@ -96,7 +96,8 @@ def test_no_option_is_explained_that_does_not_exist(command: str) -> None:
     assert set(re.findall(r"--[a-z][a-z-]*", section(command))) <= options(command)
 
 
-@pytest.mark.parametrize("name", ["model", "drift", "health", "event", "snapshot", "status"])
+@pytest.mark.parametrize("name", sorted(set(schemas.names()) - {"configuration", "summary"}))
 def test_every_field_that_is_published_is_explained(name: str) -> None:
-    published = schemas.load(name)
-    assert set(published["properties"]) - named(page("topics")) - named(page("model")) == set()
+    published = set(keys(schemas.load(name)))
+    assert len(published) > 3
+    assert published - named(page("topics")) == set()
