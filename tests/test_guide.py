@@ -5,14 +5,19 @@ from __future__ import annotations
 import argparse
 import importlib
 import re
+import textwrap
 from collections.abc import Iterator
+from pathlib import Path
 from typing import Any
 
 import pytest
 
-from rtid import schemas
+from rtid import config, schemas
 from rtid.cli.guide import TOPICS, page
 from rtid.cli.main import COMMANDS, Parser, main
+
+
+README = (Path(__file__).parents[1] / "README.md").read_text(encoding="utf-8")
 
 
 def keys(schema: Any) -> Iterator[str]:
@@ -101,3 +106,19 @@ def test_every_field_that_is_published_is_explained(name: str) -> None:
     published = set(keys(schemas.load(name)))
     assert len(published) > 3
     assert published - named(page("topics")) == set()
+
+
+def test_the_configuration_in_the_readme_is_right(tmp_path: Path) -> None:
+    found = re.search(r"```yaml\n(.*?)```", README, flags=re.DOTALL)
+    assert found is not None
+    (tmp_path / "plant.yaml").write_text(found[1])
+    node = config.load(tmp_path / "plant.yaml")
+    assert list(node.loops) == ["conveyor"]
+    assert not node.notes
+
+
+def test_the_shortest_configuration_in_the_manual_is_right(tmp_path: Path) -> None:
+    found = re.search(r"^    node: .*?(?=\n\n)", page("configuration"), flags=re.DOTALL | re.MULTILINE)
+    assert found is not None
+    (tmp_path / "plant.yaml").write_text(textwrap.dedent(found[0]))
+    assert list(config.load(tmp_path / "plant.yaml").loops) == ["conveyor"]

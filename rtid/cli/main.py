@@ -93,7 +93,7 @@ def _top_parser() -> Parser:
         prog="rtid",
         usage="rtid [-h] [--version] [--debug] COMMAND ...",
         description=f"{purpose}\n\ncommands:\n{lines}",
-        epilog="example:\n  rtid check config/minimal.yaml",
+        epilog="example:\n  rtid check plant.yaml",
     )
     parser.add_argument("--version", action="version", version=f"rtid {__version__}")
     _add_debug(parser, default=False)
