@@ -12,7 +12,7 @@ from rtid.settings import SECONDS_PER_UNIT, Place, Quality, Scale, TimeField
 
 Scalar = float | bool | str  # what a payload holds in one place
 
-NUMBER = re.compile(r"[+-]?(?:[0-9]+\.?[0-9]*|\.[0-9]+)(?:[eE][+-]?[0-9]+)?")
+NUMBER = re.compile(r"[+-]?(?:[0-9]+(?:\.[0-9]*)?|\.[0-9]+)(?:[eE][+-]?[0-9]+)?")
 
 
 class Message(ABC):

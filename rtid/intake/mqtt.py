@@ -8,9 +8,7 @@ import time
 from collections.abc import Callable
 from typing import Any
 
-from paho.mqtt.client import Client, ConnectFlags, DisconnectFlags, MQTTMessage
-from paho.mqtt.properties import Properties
-from paho.mqtt.reasoncodes import ReasonCode
+from paho.mqtt.client import Client, MQTTMessage
 
 from rtid import mqtt_client
 from rtid.intake.delivery import Delivery
@@ -83,9 +81,8 @@ class MqttIntake:
         self._client.disconnect()
         self._client.loop_stop()
 
-    def _on_connect(
-        self, client: Client, userdata: Any, flags: ConnectFlags, reason: ReasonCode, properties: Properties | None
-    ) -> None:
+    def _on_connect(self, client: Client, *details: Any) -> None:
+        _userdata, _flags, reason, _properties = details
         self._thread = threading.current_thread()
         if reason.is_failure:
             self._say(logging.ERROR, f"the broker at {self._address} refuses the connection: {reason}")
@@ -96,20 +93,18 @@ class MqttIntake:
         self._say(logging.INFO, f"connected to the broker at {self._address}")
         client.subscribe(self._feed.topic, self._feed.qos)
 
-    def _on_connect_fail(self, client: Client, userdata: Any) -> None:
+    def _on_connect_fail(self, *_: Any) -> None:
         self._thread = threading.current_thread()
         self._say(logging.WARNING, mqtt_client.why_unreachable(self._broker))
 
-    def _on_subscribe(
-        self, client: Client, userdata: Any, mid: int, reasons: list[ReasonCode], properties: Properties | None
-    ) -> None:
+    def _on_subscribe(self, *details: Any) -> None:
+        _client, _userdata, _message_id, reasons, _properties = details
         for reason in reasons:
             if reason.is_failure:
                 self._say(logging.ERROR, f"the broker refuses the subscription to {self._feed.topic}: {reason}")
 
-    def _on_disconnect(
-        self, client: Client, userdata: Any, flags: DisconnectFlags, reason: ReasonCode, properties: Properties | None
-    ) -> None:
+    def _on_disconnect(self, *details: Any) -> None:
+        _client, _userdata, _flags, reason, _properties = details
         self.counts.connected = False
         self._say(logging.WARNING, mqtt_client.why_disconnected(self._broker, reason))
 
@@ -121,7 +116,7 @@ class MqttIntake:
             return
         if self._delivery.wanted(message.topic):
             self._skew.note(message.topic, arrival)
-        self._delivery.take(message.payload, arrival=arrival, topic=message.topic)
+        self._delivery.take(bytes(message.payload), arrival=arrival, topic=message.topic)
 
     @property
     def _address(self) -> str:

@@ -12,16 +12,17 @@ import termios
 import threading
 import time
 from collections.abc import Callable
+from pathlib import Path
 
 from serial import Serial
 
 from rtid.intake.delivery import Delivery
 from rtid.intake.framing import LineFramer
-from rtid.intake.port_names import port_names
 from rtid.intake.queue import ReadingQueue
 from rtid.intake.reading import Counts, Rejected
 from rtid.settings import SerialPort, Source
 
+DEVICES = Path("/dev/serial")
 READ_TIMEOUT_S = 0.2
 PAUSE_S = 0.01  # between reads, lets bytes gather: a tenth of the processor time, at the price of later arrival times
 BACK_OFF_S = (0.5, 5.0)  # first and longest wait before the port is opened again
@@ -178,3 +179,21 @@ def why_lost(error: BaseException, port: str) -> str:
     if "returned no data" in str(error):
         return f"{port} announces data and gives none: it was unplugged, or a second program reads it"
     return f"{port} cannot be read ({error}): was it unplugged? rtid goes on trying"
+
+
+def port_names(devices: Path = DEVICES) -> list[str]:
+    """Stable names of the ports present: by identity, or by place of the plug where no identity is known.
+
+    Two adapters without serial number share one name by identity; then use the names by place.
+    """
+    for folder in ("by-id", "by-path"):
+        names = sorted(str(path) for path in (devices / folder).glob("*"))
+        if names:
+            return names
+    return []
+
+
+def reset_warning(source: Source) -> str:
+    """One sentence to be shown before the port of `source` is opened for the first time."""
+    port = source.serial.port if source.serial else source.name
+    return f"opening {port} restarts some boards: connect an isolated line on which rtid only receives"
