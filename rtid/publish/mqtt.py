@@ -15,9 +15,7 @@ from collections.abc import Mapping
 from dataclasses import dataclass, replace
 from typing import Any
 
-from paho.mqtt.client import Client, ConnectFlags, DisconnectFlags
-from paho.mqtt.properties import Properties
-from paho.mqtt.reasoncodes import ReasonCode
+from paho.mqtt.client import Client
 
 from rtid import mqtt_client
 from rtid.publish import messages
@@ -38,6 +36,7 @@ class PublishCounts:
     sent: int = 0
     failed: int = 0  # refused by the client or by the broker (access list)
     dropped: int = 0  # alarm messages that a later one replaced before they could be sent
+    held: int = 0  # messages in memory now: bounded by the number of topics
 
 
 class MqttPublisher:
@@ -50,6 +49,7 @@ class MqttPublisher:
         self._broker = broker
         self._node = node
         self._root = f"{broker.prefix}/{node}"
+        self._address = f"{broker.host}:{broker.port}"
         self._outbox = Outbox()
         self._counts = PublishCounts()
         self._connected = False
@@ -99,10 +99,12 @@ class MqttPublisher:
             self._thread.join(GOODBYE_S / 2)
         if self._connected:
             self._say_goodbye(deadline)
+        self._client.disable_logger()  # it logs the end that we ask for as an error
         self._client.disconnect()
         ending = threading.Thread(target=self._client.loop_stop, name="publish-end", daemon=True)
         ending.start()
         ending.join(max(0.0, deadline - time.monotonic()))
+        self._connected = False
 
     @property
     def connected(self) -> bool:
@@ -111,12 +113,13 @@ class MqttPublisher:
     @property
     def counts(self) -> PublishCounts:
         """The counts of now."""
-        return replace(self._counts, dropped=self._outbox.dropped)
+        return replace(self._counts, dropped=self._outbox.dropped, held=len(self._outbox))
 
     def _make_client(self, client_id: str) -> Client:
         client = mqtt_client.make_client(self._broker, client_id)
         client.will_set(self._status_topic, messages.OFFLINE, qos=1, retain=True)
         client.on_connect = self._on_connect
+        client.on_connect_fail = self._on_connect_fail
         client.on_disconnect = self._on_disconnect
         client.on_publish = self._on_publish
         return client
@@ -148,32 +151,32 @@ class MqttPublisher:
         with contextlib.suppress(ValueError, RuntimeError):  # the connection went away: the will speaks
             info.wait_for_publish(max(0.0, deadline - time.monotonic()))
 
-    def _on_connect(  # noqa: PLR0917 - the client's signature
-        self, client: Client, data: Any, flags: ConnectFlags, reason: ReasonCode, properties: Properties | None
-    ) -> None:
+    def _on_connect(self, client: Client, *details: Any) -> None:
+        _data, _flags, reason, _properties = details
         if reason.is_failure:
-            self._complain(f"the broker refuses the connection: {reason}")
+            self._complain(f"the broker at {self._address} refuses the connection: {reason}")
             return
         self._complaint = ""
         self._counts.connections += 1
         self._connected = True
         self._greeting_id = client.publish(self._status_topic, self._greeting, qos=1, retain=True).mid
-        log.info("connected to the broker %s:%d", self._broker.host, self._broker.port)
+        log.info("connected to the broker at %s", self._address)
 
-    def _on_disconnect(  # noqa: PLR0917 - the client's signature
-        self, client: Client, data: Any, flags: DisconnectFlags, reason: ReasonCode, properties: Properties | None
-    ) -> None:
+    def _on_connect_fail(self, *_: Any) -> None:
+        self._complain(mqtt_client.why_unreachable(self._broker))
+
+    def _on_disconnect(self, *details: Any) -> None:
+        _client, _data, _flags, reason, _properties = details
         if self._connected and reason.is_failure:
-            self._complain(f"the connection to the broker was lost: {reason}")
+            self._complain(mqtt_client.why_disconnected(self._broker, reason))
         self._connected = False
         self._outbox.shut()
 
-    def _on_publish(  # noqa: PLR0917 - the client's signature
-        self, client: Client, data: Any, message_id: int, reason: ReasonCode, properties: Properties | None
-    ) -> None:
+    def _on_publish(self, *details: Any) -> None:
+        _client, _data, message_id, reason, _properties = details
         if reason.is_failure:
             self._counts.failed += 1
-            self._complain(f"the broker refuses a message: {reason}; mend its access list")
+            self._complain(f"the broker at {self._address} refuses a message ({reason}); mend its access list")
         else:
             self._counts.sent += 1
         if message_id == self._greeting_id:
@@ -186,4 +189,4 @@ class MqttPublisher:
         """Once, not at every attempt."""
         if text != self._complaint:
             self._complaint = text
-            log.warning("%s:%d: %s", self._broker.host, self._broker.port, text)
+            log.warning("%s", text)

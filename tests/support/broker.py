@@ -17,7 +17,7 @@ import sys
 import tempfile
 import threading
 import time
-from collections.abc import Callable, Mapping
+from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass
 from pathlib import Path
 from types import TracebackType
@@ -55,16 +55,19 @@ def free_port() -> int:
 class Broker:
     """`with Broker() as broker:` runs a broker on `broker.port`; what it retained is gone after `restart()`.
 
-    `users` (name to password) closes it to everybody else.
+    `users` (name to password) closes it to everybody else; `more` are further lines of mosquitto's configuration.
     """
 
-    def __init__(self, port: int | None = None, *, users: Mapping[str, str] | None = None) -> None:
+    def __init__(
+        self, port: int | None = None, *, users: Mapping[str, str] | None = None, more: Sequence[str] = ()
+    ) -> None:
         self.port = port or free_port()
         self._users = users
+        self._more = tuple(more)
         self._folder = tempfile.TemporaryDirectory(prefix="rtid-broker-")
         self._process: subprocess.Popen[bytes] | None = None
-        if users is not None and mosquitto() is None:
-            raise RuntimeError("the fallback broker knows no passwords: install mosquitto")
+        if (users is not None or more) and mosquitto() is None:
+            raise RuntimeError("the fallback broker cannot be configured: install mosquitto")
 
     def __enter__(self) -> Self:
         self.start()
@@ -99,6 +102,13 @@ class Broker:
         self.start()
 
     @property
+    def pid(self) -> int:
+        """Process number of the running broker."""
+        if self._process is None:
+            raise RuntimeError("the broker is not running")
+        return self._process.pid
+
+    @property
     def _log(self) -> Path:
         return Path(self._folder.name, "broker.log")
 
@@ -109,7 +119,7 @@ class Broker:
         return [program, "-c", str(self._configuration())]
 
     def _configuration(self) -> Path:
-        lines = [f"listener {self.port} 127.0.0.1", "persistence false", "log_dest stderr"]
+        lines = [f"listener {self.port} 127.0.0.1", "persistence false", "log_dest stderr", *self._more]
         lines.append(f"allow_anonymous {'true' if self._users is None else 'false'}")
         if os.geteuid() == 0:
             lines.append("user root")
