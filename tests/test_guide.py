@@ -16,7 +16,6 @@ from rtid import config, schemas
 from rtid.cli.guide import TOPICS, page
 from rtid.cli.main import COMMANDS, Parser, main
 
-
 README = (Path(__file__).parents[1] / "README.md").read_text(encoding="utf-8")
 
 
