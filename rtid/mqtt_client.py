@@ -19,7 +19,7 @@ from rtid.settings import Broker, Tls
 
 KEEPALIVE_S = 30
 RECONNECT_S = (1, 5)  # first and longest wait; paho's own 120 s keep a node away after the broker is back
-SESSION_TAKEN_OVER = 0x8E  # MQTT 5.0, section 3.14.2.1
+UNSPECIFIED, SESSION_TAKEN_OVER = 0x80, 0x8E  # reason codes of MQTT 5.0, section 3.14.2.1
 QUEUED_MESSAGES = 1000  # of QoS 1 and 2 while the broker is away; paho's own queue has no bound
 
 
@@ -86,8 +86,11 @@ def why_unreachable(broker: Broker) -> str:
 
 
 def why_disconnected(broker: Broker, reason: ReasonCode) -> str:
-    """Why a connection ended, in one line."""
+    """Why a connection ended, in one line. Not every broker says that another client took it over: some just close."""
     address = f"{broker.host}:{broker.port}"
     if reason.value == SESSION_TAKEN_OVER:
         return f"another client with the same client id took over the connection to {address}: give each node its name"
+    if reason.value == UNSPECIFIED:
+        causes = "the broker stopped, the network failed, or another client has the same client id"
+        return f"the connection to the broker at {address} was lost: {causes}"
     return f"the connection to the broker at {address} ended ({reason})"

@@ -106,7 +106,8 @@ class MqttIntake:
     def _on_disconnect(self, *details: Any) -> None:
         _client, _userdata, _flags, reason, _properties = details
         self.counts.connected = False
-        self._say(logging.WARNING, mqtt_client.why_disconnected(self._broker, reason))
+        level = logging.WARNING if reason.is_failure else logging.INFO
+        self._say(level, mqtt_client.why_disconnected(self._broker, reason))
 
     def _on_message(self, client: Client, userdata: Any, message: MQTTMessage) -> None:
         arrival = self._monotonic()
