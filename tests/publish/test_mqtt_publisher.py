@@ -161,6 +161,22 @@ def test_broker_away_and_back_gets_the_latest_of_each_topic_once(mqtt5_broker: B
         assert publisher.counts.dropped == 2
 
 
+def test_alarm_that_the_broker_never_acknowledged_does_not_come_back_over_a_newer_one(mqtt5_broker: Broker) -> None:
+    with running(mqtt5_broker.port) as publisher:
+        settle(publisher, mqtt5_broker.port)
+        os.kill(mqtt5_broker.pid, signal.SIGSTOP)
+        raise_alarm(publisher, transition="active")
+        wait_until(lambda: publisher.counts.held == 1)
+        mqtt5_broker.kill()
+        wait_until(lambda: not publisher.connected)
+        raise_alarm(publisher, transition="cleared")
+        mqtt5_broker.start()
+        wait_until(lambda: publisher.counts.connections == 2)
+        settle(publisher, mqtt5_broker.port)
+        stands = kept(mqtt5_broker.port)["conveyor/alarm/plant_drift"]
+    assert json.loads(stands.payload)["transition"] == "cleared"
+
+
 def test_broker_that_forgot_everything_gets_it_again(mqtt5_broker: Broker) -> None:
     with running(mqtt5_broker.port) as publisher:
         publisher.report(make_report())
