@@ -43,13 +43,12 @@ class Outlets:
         for transition in report.transitions:
             self._event(transition, report.loop)
             self._watch_storage()
-        if report.due:
-            self.publish(report)
+        self.publish(report)
         for observer in self._observers:
             _guarded(observer.report, report)
 
     def publish(self, report: Report) -> None:
-        """Put the numbers of a report on the broker."""
+        """Put a report on the broker: its numbers when it is due, its health when that changed."""
         if self._publisher is not None:
             self._publisher.report(report)
 

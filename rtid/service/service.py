@@ -8,6 +8,7 @@ import time
 from collections.abc import Callable, Sequence
 from concurrent.futures import Future
 from concurrent.futures import TimeoutError as WaitTimeout
+from dataclasses import replace
 from pathlib import Path
 from typing import Any
 
@@ -28,6 +29,7 @@ from rtid.settings import Node
 
 WAIT_S = 0.25  # longest wait for a reading: how late a stop or a silence is noticed
 ANSWER_S = 5.0  # longest wait for the worker's answer
+GOODBYE_S = 2.0  # longest wait for the sources to close
 
 log = logging.getLogger("rtid.service")
 
@@ -105,8 +107,7 @@ class Service:
                 self._turn(pipeline, silence)
                 complaints.look(time.monotonic())
         finally:
-            for intake in intakes:
-                intake.stop()
+            _stop(intakes)
         self._turn(pipeline, silence)
 
     def _turn(self, pipeline: Pipeline, silence: SilenceWatch) -> None:
@@ -123,11 +124,13 @@ class Service:
     def _finish(self, pipeline: Pipeline, outlets: Outlets) -> None:
         for name, loop in pipeline.loops.items():
             pipeline.flush(name, time.time())
-            outlets.publish(loop.report)
+            outlets.publish(replace(loop.report, due=True))
 
     def _make_publisher(self) -> MqttPublisher | None:
         node = self._node
-        return node.broker and MqttPublisher(node.broker, node=node.name, client_id=f"rtid-{node.name}")
+        if node.broker is None:
+            return None
+        return MqttPublisher(node.broker, node=node.name, client_id=f"rtid-{node.name}")
 
     def _make_intakes(self) -> list[Intake]:
         node = self._node
@@ -146,3 +149,13 @@ class Service:
         log.info("state in %s", folder)
         if node.broker is not None:
             log.info("broker %s:%d, topics under %s/", node.broker.host, node.broker.port, node.broker.prefix)
+
+
+def _stop(intakes: Sequence[Intake]) -> None:
+    """All at once, and none for longer than two seconds: a broker that does not answer must not delay the goodbye."""
+    endings = [threading.Thread(target=intake.stop, name=f"{intake.name}-end", daemon=True) for intake in intakes]
+    for ending in endings:
+        ending.start()
+    deadline = time.monotonic() + GOODBYE_S
+    for ending in endings:
+        ending.join(max(0.0, deadline - time.monotonic()))

@@ -32,12 +32,16 @@ def test_a_held_input_agrees_with_scipy() -> None:
     assert np.allclose(bd, expected[1], rtol=1e-13, atol=0.0)
 
 
-@pytest.mark.parametrize(("dead_time_s", "delay", "later", "earlier"), [
-    (2.0, 2, 0.190325164, 0.0),
-    (2.3, 2, 0.135212360, 0.055112804),
-])
-def test_dead_time_splits_the_input_as_in_the_worked_case(dead_time_s: float, delay: int, later: float,
-                                                          earlier: float) -> None:
+@pytest.mark.parametrize(
+    ("dead_time_s", "delay", "later", "earlier"),
+    [
+        (2.0, 2, 0.190325164, 0.0),
+        (2.3, 2, 0.135212360, 0.055112804),
+    ],
+)
+def test_dead_time_splits_the_input_as_in_the_worked_case(
+    dead_time_s: float, delay: int, later: float, earlier: float
+) -> None:
     """Zero-order hold of K = 2, T = 10 at 1 s; derived by hand from the step response."""
     step = delayed(np.array([[-0.1]]), np.array([[0.2]]), period_s=1.0, dead_time_s=dead_time_s)
     assert step.delay == delay
@@ -70,8 +74,11 @@ def test_the_running_motor_reaches_its_gain_with_its_time_constants() -> None:
     assert speeds[-1] == pytest.approx(10.0 * Motor().gain, rel=1e-4)
     poles = np.array(Motor().poles)
     modes = np.exp(np.outer(np.arange(1, 601) * 0.01, poles)).real
-    expected = 10.0 * Motor().gain * (1.0 + (modes[:, 0] * poles[1].real - modes[:, 1] * poles[0].real)
-                                      / (poles[0] - poles[1]).real)
+    expected = (
+        10.0
+        * Motor().gain
+        * (1.0 + (modes[:, 0] * poles[1].real - modes[:, 1] * poles[0].real) / (poles[0] - poles[1]).real)
+    )
     assert np.allclose(speeds, expected, rtol=0.0, atol=1e-9)
 
 

@@ -21,14 +21,17 @@ def scipy_output(plant: LinearPlant, inputs: np.ndarray, fine: int) -> np.ndarra
     return plant.offset + plant.gain * inputs[0] + response[::fine]
 
 
-@pytest.mark.parametrize("plant", [
-    first_order(2.0, 1.0),
-    first_order(-2.0, 1.0, dead_time_s=0.3, offset=5.0),
-    first_order(2.0, 0.5, dead_time_s=0.14),
-    second_order(3.0, 4.0, 0.3, dead_time_s=0.06),
-    second_order(1.0, 2.0, 1.0),
-    two_lags(0.5, 2.0, 0.2, dead_time_s=0.02, offset=-1.0),
-])
+@pytest.mark.parametrize(
+    "plant",
+    [
+        first_order(2.0, 1.0),
+        first_order(-2.0, 1.0, dead_time_s=0.3, offset=5.0),
+        first_order(2.0, 0.5, dead_time_s=0.14),
+        second_order(3.0, 4.0, 0.3, dead_time_s=0.06),
+        second_order(1.0, 2.0, 1.0),
+        two_lags(0.5, 2.0, 0.2, dead_time_s=0.02, offset=-1.0),
+    ],
+)
 def test_simulation_agrees_with_scipy(plant: LinearPlant) -> None:
     inputs = random_steps(200, low=-1.0, high=3.0, hold=(3, 12), seed=4)
     ours = simulate(plant, inputs, period_s=PERIOD_S)
