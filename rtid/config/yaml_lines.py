@@ -108,9 +108,10 @@ class _Builder:
 
     def _only_document(self) -> Item:
         self._next()  # the start of the stream
-        if not isinstance(self._next(), DocumentStartEvent):
+        has_document = isinstance(self._next(), DocumentStartEvent)
+        root = self._item(self._next(), "", depth=0) if has_document else Item(1, None)
+        if root.content is None:
             self._refuse(1, "", "the file is empty; expected node, sources and loops")
-        root = self._item(self._next(), "", depth=0)
         self._next()  # the end of the document
         after = self._next()
         if not isinstance(after, StreamEndEvent):
