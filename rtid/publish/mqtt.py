@@ -67,7 +67,7 @@ class MqttPublisher:
         mqtt_client.start(self._client, self._broker)
 
     def report(self, report: Report) -> None:
-        """`model`, `drift` and `health` when the report is due; `health` also when it changed in between."""
+        """`model` (from the first fit on), `drift` and `health` when due; `health` also when it changed in between."""
         health = (report.health, report.state)
         if not report.due and self._last_health.get(report.loop) == health:
             return
@@ -75,7 +75,7 @@ class MqttPublisher:
         self._put(f"{report.loop}/health", messages.health(report, self._node))
         if report.due:
             self._put(f"{report.loop}/drift", messages.drift(report, self._node))
-        if report.due and report.quantities:
+        if report.due and any(quantity.value is not None for quantity in report.quantities.values()):
             self._put(f"{report.loop}/model", messages.model(report, self._node))
 
     def event(self, payload: Mapping[str, Any], loop: str, transition: Transition) -> None:

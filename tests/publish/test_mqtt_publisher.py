@@ -18,7 +18,7 @@ import pytest
 
 from rtid.publish import messages
 from rtid.publish.mqtt import MqttPublisher
-from rtid.report import Drift
+from rtid.report import Drift, Quantity
 from rtid.settings import Broker as BrokerSettings
 from tests.support.broker import Broker, Listener, Message, free_port, mosquitto, publish
 from tests.support.reports import STAMP, make_report, make_transition
@@ -130,9 +130,10 @@ def test_report_between_two_due_ones_is_published_only_when_health_changed(mqtt5
         assert not listener.on(f"{ROOT}/conveyor/drift")
 
 
-def test_no_model_before_the_first_fit(mqtt5_broker: Broker) -> None:
+@pytest.mark.parametrize("quantities", [{}, {"gain": Quantity(None, None, None, None, "")}])
+def test_no_model_before_the_first_fit(mqtt5_broker: Broker, quantities: dict[str, Quantity]) -> None:
     with running(mqtt5_broker.port) as publisher:
-        publisher.report(make_report(quantities={}))
+        publisher.report(make_report(quantities=quantities))
         settle(publisher, mqtt5_broker.port)
         assert kept(mqtt5_broker.port).keys() == {"status", "conveyor/health", "conveyor/drift"}
 
