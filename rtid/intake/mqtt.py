@@ -43,7 +43,7 @@ class MqttIntake:
         self._feed = source.mqtt
         self._broker = broker
         self._delivery = Delivery(source, queue)
-        self._skew = Skew(source.signals[0].place.topic)
+        self._skew = Skew(_one_topic(source.signals[0].place.topic))
         self._monotonic = monotonic
         self._connected_before = False
         self._said = ""
@@ -80,6 +80,7 @@ class MqttIntake:
         """Say goodbye to the broker and wait for the network thread."""
         self._client.disconnect()
         self._client.loop_stop()
+        self.counts.connected = False
 
     def _on_connect(self, client: Client, *details: Any) -> None:
         _userdata, _flags, reason, _properties = details
@@ -128,3 +129,8 @@ class MqttIntake:
         if text != self._said:
             self._said = text
             log.log(level, "%s: %s", self.name, text)
+
+
+def _one_topic(filter_: str | None) -> str | None:
+    """None for a filter that stands for several topics."""
+    return None if filter_ is None or "+" in filter_ or "#" in filter_ else filter_

@@ -44,14 +44,15 @@ class Running:
     def __exit__(self, *_: object) -> None:
         self.intake.stop()
         assert not self.intake.alive
+        assert not self.intake.connected
 
-    def wait_subscribed(self) -> None:
+    def wait_subscribed(self, unwanted: str = "plant/hall/nothing") -> None:
         """Publish on a topic that no signal wants until a message arrives."""
         before = self.intake.counts.messages
 
         def heard() -> bool:
             if self.intake.connected:
-                publish(self.port, "plant/hall/nothing", "{}")
+                publish(self.port, unwanted, "{}")
             return self.intake.counts.messages > before
 
         wait_until(heard, what="the subscription")
@@ -116,8 +117,7 @@ def test_plain_numbers_under_wildcards(mqtt5_broker: Broker) -> None:
     rooms = source("plain", signal("rooms.east", topic="rooms/east/+"), signal("rooms.west", topic="rooms/west/#"),
                    mqtt=MqttFeed("rooms/#", qos=1))
     with Running(mqtt5_broker.port, rooms) as running:
-        wait_until(lambda: running.intake.connected)
-        wait_until(lambda: publish(mqtt5_broker.port, "rooms", "0") or running.intake.counts.messages)
+        running.wait_subscribed("rooms")
         publish(mqtt5_broker.port, "rooms/east/temp", "20.5", qos=1)
         publish(mqtt5_broker.port, "rooms/west", "19", qos=1)
         publish(mqtt5_broker.port, "rooms/west", "warm", qos=1)
@@ -125,6 +125,7 @@ def test_plain_numbers_under_wildcards(mqtt5_broker: Broker) -> None:
         assert [dict(reading.values) for reading in running.wait_for(3)] == [
             {"rooms.east": 20.5}, {"rooms.west": 19.0}, {"rooms.west": 18.0}]
         assert running.intake.counts.rejected == {"number": 1}
+        assert set(running.intake.skew_s()) == {"rooms/east/temp", "rooms/west"}
 
 
 def test_fault_in_a_callback_does_not_end_the_network_thread(

@@ -2,7 +2,7 @@ from __future__ import annotations
 
 import threading
 
-from rtid.intake.queue import ReadingQueue
+from rtid.intake.queue import Item, ReadingQueue
 from rtid.intake.reading import Counts, Reading
 
 
@@ -12,7 +12,7 @@ def reading(time: float, source: str = "drive") -> Reading:
 
 def test_gives_everything_that_waits_in_order() -> None:
     queue = ReadingQueue()
-    items = [reading(0.0), reading(1.0), lambda: None, reading(2.0)]
+    items: list[Item] = [reading(0.0), reading(1.0), lambda: None, reading(2.0)]
     for item in items:
         queue.put(item)
     assert queue.get(0.0) == items
