@@ -9,30 +9,22 @@ from rtid.intake.clock import Values, from_pairs, to_pairs
 
 
 class Mean:
-    """Mean of readings and of their offsets from the tick (in periods)."""
+    """Running mean of readings and of their offsets from the tick, in periods. Exact for equal readings."""
 
-    __slots__ = ("_count", "_offsets", "_total")
+    __slots__ = ("_count", "offset", "value")
 
-    def __init__(self, total: float = 0.0, offsets: float = 0.0, count: int = 0) -> None:
-        self._total = total
-        self._offsets = offsets
+    def __init__(self, value: float = 0.0, offset: float = 0.0, count: int = 0) -> None:
+        self.value = value
+        self.offset = offset
         self._count = count
 
     def add(self, value: float, offset: float) -> None:
-        self._total += value
-        self._offsets += offset
         self._count += 1
-
-    @property
-    def value(self) -> float:
-        return self._total / self._count
-
-    @property
-    def offset(self) -> float:
-        return self._offsets / self._count
+        self.value += (value - self.value) / self._count
+        self.offset += (offset - self.offset) / self._count
 
     def to_state(self) -> list[float]:
-        return [self._total, self._offsets, self._count]
+        return [self.value, self.offset, self._count]
 
 
 class Cell:
@@ -65,5 +57,5 @@ class Cell:
         cell = cls()
         cell.inputs = from_pairs(state["inputs"])
         cell.output, cell._distance = state["output"] or (math.nan, math.inf)
-        cell.means = {column: Mean(*sums) for column, *sums in state["means"]}
+        cell.means = {column: Mean(*mean) for column, *mean in state["means"]}
         return cell

@@ -1,13 +1,9 @@
 """Readings into ticks: to which tick each reading belongs, when a tick is final, and what its row says.
 
 A tick is final when every signal has a reading at a later tick, or any signal one at least `FINAL_AFTER` ticks later:
-an input that changes rarely does not hold the loop back for ever. All of it follows from the readings alone.
-
-Oversampling. The first `DECIDING_TICKS` ticks on which all signals are known decide once, and rows wait for that: a
-signal is fast when the last `SPAN_READINGS` readings of it on those ticks span less than `FAST_SPAN` periods (two or
-more per period, with room for jitter; the last ones, because a port may open with a burst or a pause). A fast output
-is averaged over the readings nearest to the tick. A fast input is averaged over [t_k, t_k+1), in which it is applied,
-and a reading up to half a sub-sample before t_k counts as being at t_k.
+an input that changes rarely does not hold the loop back for ever. All of it follows from the readings alone. The first
+`DECIDING_TICKS` ticks on which all signals are known decide once which signals are fast and averaged (oversampling.py);
+rows wait for that.
 """
 
 from __future__ import annotations
@@ -19,24 +15,15 @@ from typing import Any
 from rtid import settings
 from rtid.intake.cell import Cell
 from rtid.intake.clock import Values, from_pairs, to_pairs
+from rtid.intake.oversampling import window_shift
 
 FINAL_AFTER = 4  # one more than the longest hole that is bridged
 DECIDING_TICKS = 8
-SPAN_READINGS = 9
-FAST_SPAN = 4.5  # eight intervals at two per period last 4; half a period of room
 CROWD = 4096  # so many readings on the deciding ticks decide at once: memory stays bounded
 UNSEEN = -(2.0**60)  # position of a signal that was never read
 
 Message = tuple[float, Values]  # position in ticks, values by column
 Row = tuple[list[float], float]  # values by column, offset of the output from the tick in periods
-
-
-def half_subsample(positions: list[float]) -> float | None:
-    """Half the interval between readings at `positions` (in ticks, ascending), in periods; None: they are not fast."""
-    if len(positions) < SPAN_READINGS:
-        return None
-    span = positions[-1] - positions[-SPAN_READINGS]
-    return span / (2 * (SPAN_READINGS - 1)) if span < FAST_SPAN else None
 
 
 class Ticks:
@@ -45,7 +32,8 @@ class Ticks:
     def __init__(self, loop: settings.Loop, rejected: Counter[str]) -> None:
         self._count = len(loop.signals)
         self._output = loop.signals.index(loop.output)
-        self._averaged = [loop.signals.index(name) for name in dict.fromkeys((*loop.inputs, loop.output))]
+        inputs = {loop.signals.index(name): 0.0 for name in loop.inputs}
+        self._windows = {**inputs, self._output: -0.5}  # where a mean over one period begins, in ticks from the tick
         self._rejected = rejected
         self.reset()
 
@@ -60,8 +48,7 @@ class Ticks:
         self._since = self._next  # the first tick on which every signal is known
         self._decided = False
         self._deciding_from = self._next
-        self._fast: dict[int, float] = {}  # column -> half a sub-sample, in periods
-        self._lag = 0
+        self._set_fast({})
 
     def take(self, position: float, values: Values) -> None:
         """Put one reading at `position` (in ticks) on its tick, without the signals that run backwards."""
@@ -129,26 +116,26 @@ class Ticks:
         cell = self._cells.get(tick)
         if cell is None:
             cell = self._cells[tick] = Cell()
-        fast = self._fast
         for column, value in values.items():
-            if column == self._output:
+            if column in self._fast:
+                self._put_fast(column, position, value)
+            elif column == self._output:
                 cell.add_output(value, position - tick)
-                if column in fast:
-                    cell.add_mean(column, value, position - tick)
-            elif column in fast:
-                self._put_fast_input(column, position, value)
             else:
                 cell.inputs[column] = value
 
-    def _put_fast_input(self, column: int, position: float, value: float) -> None:
-        """On the tick in whose hold the reading falls; when that tick is closed already the value holds on from it."""
-        tick = math.floor(position + self._fast[column])
-        if tick < self._next:
+    def _put_fast(self, column: int, position: float, value: float) -> None:
+        """On the tick in whose window the reading falls. When that is closed already, an input holds on from there."""
+        tick = math.floor(position - self._fast[column])
+        if tick >= self._next:
+            cell = self._cells.setdefault(tick, Cell())
+            cell.add_mean(column, value, position - tick)
+            if column != self._output:
+                cell.inputs[column] = value
+        elif column != self._output:
             self._held[column] = value
-            return
-        cell = self._cells.setdefault(tick, Cell())
-        cell.inputs[column] = value
-        cell.add_mean(column, value, position - tick)
+        else:
+            self._rejected["late"] += 1
 
     def _wait(self, position: float, tick: int, values: Values) -> None:
         if not self._unseen.isdisjoint(values):
@@ -170,14 +157,18 @@ class Ticks:
         return final
 
     def _decide(self, last_deciding: int) -> None:
-        halves = {column: half_subsample(self._positions(column, last_deciding)) for column in self._averaged}
-        self._set_fast({column: half for column, half in halves.items() if half is not None})
+        fast = {}
+        for column, begin in self._windows.items():
+            shift = window_shift(self._positions(column, last_deciding), begin)
+            if shift is not None:
+                fast[column] = begin + shift
+        self._set_fast(fast)
         self._decided = True
         self._release(max(self._waiting))
 
     def _set_fast(self, fast: dict[int, float]) -> None:
-        self._fast = fast
-        self._lag = 1 if fast.keys() - {self._output} else 0  # a fast input of tick k may stand nearest to k + 1
+        self._fast = fast  # column -> where its window begins, in ticks from the tick
+        self._lag = 1 if fast else 0  # the end of a window may be nearer to the next tick
 
     def _positions(self, column: int, last_tick: int) -> list[float]:
         ticks = sorted(tick for tick in self._waiting if tick <= last_tick)
