@@ -9,9 +9,8 @@ from collections.abc import Callable, Iterator, Mapping
 from dataclasses import dataclass
 from typing import Any
 
-from rtid.config.broker import PORT
 from rtid.config.entry import Entry, Kind, Section
-from rtid.config.values import FLAG, TEXT, number
+from rtid.config.outlets import COMMANDS, PAGE, RECORD
 from rtid.config.yaml_lines import Content
 
 
@@ -50,24 +49,9 @@ REFUSED = (
 )
 
 REMARKED = (
-    Remarked(
-        "page",
-        {"listen": TEXT, "port": PORT},
-        _always,
-        "page: not in this version, nothing is served",
-    ),
-    Remarked(
-        "record",
-        {"keep_mb": number("a number of megabytes", above=0, most=1e6)},
-        _always,
-        "record: not in this version, no raw samples are kept",
-    ),
-    Remarked(
-        "commands",
-        {"mqtt": FLAG},
-        lambda values: values.get("mqtt") is True,
-        "commands: not in this version, no operator action is taken over MQTT",
-    ),
+    Remarked("page", PAGE, _always, "nothing is served"),
+    Remarked("record", RECORD, _always, "no raw samples are kept"),
+    Remarked("commands", COMMANDS, lambda values: values.get("mqtt") is True, "no operator action is taken over MQTT"),
 )
 
 
@@ -81,7 +65,8 @@ def refuse(root: Entry) -> None:
 
 def remarks(section: Section) -> tuple[str, ...]:
     """What to say of the sections that are accepted here without an effect."""
-    return tuple(later.remark for later in REMARKED if later.section in section and _wanted(section, later))
+    here = (later for later in REMARKED if later.section in section and _wanted(section, later))
+    return tuple(f"{later.section}: not in this version, {later.remark}" for later in here)
 
 
 def _wanted(section: Section, later: Remarked) -> bool:

@@ -11,8 +11,9 @@ from rtid.config.broker import broker
 from rtid.config.entry import Entry, Kind, Section
 from rtid.config.loop_parts import ALARM_BUDGET
 from rtid.config.loops import loops
+from rtid.config.outlets import PUBLISH, RECORD
 from rtid.config.sources import sources
-from rtid.config.values import NAME, TEXT, number, seconds
+from rtid.config.values import NAME, TEXT
 from rtid.config.yaml_lines import read
 from rtid.settings import Node
 
@@ -29,8 +30,6 @@ _KEYS = (
     "commands",
 )
 _NAME = Kind("a name for this computer", NAME)
-_PUBLISH = {"every_s": seconds(above=0)}
-_RECORD = {"keep_mb": number("a number of megabytes", above=0, most=1e6)}
 
 
 def load(path: str | os.PathLike[str], *, environ: Mapping[str, str] = os.environ) -> Node:
@@ -47,7 +46,7 @@ def load(path: str | os.PathLike[str], *, environ: Mapping[str, str] = os.enviro
     joined = section.get("broker", broker, None)
     read_from = section.need("sources", Kind("the sources that are read", lambda entry: sources(entry, joined)))
     budget = section.get("alarm_budget", ALARM_BUDGET, None)
-    pace = _flat(section, "publish", _PUBLISH)
+    pace = _flat(section, "publish", PUBLISH)
     watched = Kind("the loops that are watched", lambda entry: loops(entry, read_from, budget=budget, pace=pace))
     return Node(
         name=name,
@@ -57,7 +56,7 @@ def load(path: str | os.PathLike[str], *, environ: Mapping[str, str] = os.enviro
         broker=joined,
         notes=later.remarks(section),
         **pace,
-        **_flat(section, "record", _RECORD),
+        **_flat(section, "record", RECORD),
     )
 
 

@@ -14,6 +14,7 @@ from rtid.settings import (
     Broker,
     Condition,
     Controller,
+    Decode,
     Gate,
     Loop,
     Model,
@@ -87,13 +88,15 @@ models = st.builds(
 
 @st.composite
 def places(draw: st.DrawFn, decode: str, topic: str | None = None) -> Place:
-    value = {"csv": st.integers(0, 1000), "json": texts, "senml": texts}.get(decode)
-    return Place(topic=topic, **({} if value is None else {PLACE_KEY[decode]: draw(value)}))
+    if decode == "plain":
+        return Place(topic=topic)
+    value: Any = draw(st.integers(0, 1000) if decode == "csv" else texts)
+    return Place(topic=topic, **{PLACE_KEY[decode]: value})
 
 
 @st.composite
 def signals(draw: st.DrawFn, name: str, decode: str, topic: str | None) -> Signal:
-    quality = st.none()
+    quality: st.SearchStrategy[Quality | None] = st.none()
     if decode != "plain":
         quality |= st.builds(Quality, place=places(decode), good=flags | numbers | texts)
     return Signal(
@@ -112,7 +115,8 @@ def signals(draw: st.DrawFn, name: str, decode: str, topic: str | None) -> Signa
 def sources(draw: st.DrawFn, name: str) -> Source:
     """A source with two or three signals; its name makes its serial port unique."""
     mqtt = draw(flags)
-    decode = draw(st.sampled_from(["csv", "json", "senml", "plain"] if mqtt else ["csv", "json", "senml"]))
+    decodes: tuple[Decode, ...] = ("csv", "json", "senml", "plain") if mqtt else ("csv", "json", "senml")
+    decode = draw(st.sampled_from(decodes))
     own = draw(st.lists(names, min_size=2, max_size=3, unique=True))
     topics = [f"plant/{signal}/x" if mqtt and (decode == "plain" or draw(flags)) else None for signal in own]
     timed = decode in {"csv", "json"} and draw(flags)
@@ -207,7 +211,9 @@ def _plain(record: Any) -> Any:
         return {key: _plain(value) for key, value in record.items() if value is not None}
     if isinstance(record, tuple):
         return [_plain(value) for value in record]
-    return _plain(dataclasses.asdict(record)) if dataclasses.is_dataclass(record) else record
+    if dataclasses.is_dataclass(record) and not isinstance(record, type):
+        return _plain(dataclasses.asdict(record))
+    return record
 
 
 def _placed(record: dict[str, Any]) -> dict[str, Any]:
@@ -216,7 +222,7 @@ def _placed(record: dict[str, Any]) -> dict[str, Any]:
 
 
 def _source(source: Source) -> dict[str, Any]:
-    written = _plain(source)
+    written: dict[str, Any] = _plain(source)
     del written["name"]
     written["signals"] = {each["name"].partition(".")[2]: _signal(each) for each in written["signals"]}
     if "time" in written:
@@ -236,7 +242,7 @@ def _signal(written: dict[str, Any]) -> dict[str, Any]:
 
 
 def _loop(loop: Loop) -> dict[str, Any]:
-    written = _plain(loop)
+    written: dict[str, Any] = _plain(loop)
     for key in ("name", "units", "ranges", "limits", "publish_every_s"):
         del written[key]
     if loop.active_when:
