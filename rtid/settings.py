@@ -179,6 +179,27 @@ class AlarmSetting:
     latching: bool = False
 
 
+_LOW, _MEDIUM = AlarmSetting(), AlarmSetting(priority="medium")
+
+DEFAULT_ALARMS: dict[str, AlarmSetting] = {  # every alarm there is; a configuration changes single values
+    "plant_shift": _LOW,
+    "plant_drift": _LOW,
+    "noise_change": _LOW,
+    "cannot_judge": _LOW,
+    "estimate_invalid": _MEDIUM,
+    "data_stale": _MEDIUM,
+    "data_gap": _LOW,
+    "out_of_range": _MEDIUM,
+    "frozen_signal": _LOW,
+    "saturated": _LOW,
+    "outliers": _LOW,
+    "timing": _LOW,
+    "oscillation": _LOW,
+    "storage": _MEDIUM,
+    "clock": _LOW,
+}
+
+
 @dataclass(frozen=True, slots=True)
 class Controller:
     """The present settings, kept for the retuning advice. Gains in engineering units unless spans are given."""

@@ -3,11 +3,13 @@
 from __future__ import annotations
 
 from collections.abc import Callable
+from dataclasses import replace
 from typing import Any, get_args
 
 from rtid.config.entry import Entry, Section, one_of, record
 from rtid.config.values import FLAG, choice, number, pair, seconds
 from rtid.settings import (
+    DEFAULT_ALARMS,
     AlarmBudget,
     AlarmSetting,
     Baseline,
@@ -21,24 +23,6 @@ from rtid.settings import (
 
 STRUCTURES: tuple[Structure, ...] = ("output_error", "equation_error")
 PRIORITIES: tuple[Priority, ...] = get_args(Priority)
-ALARMS = (
-    "plant_shift",
-    "plant_drift",
-    "noise_change",
-    "cannot_judge",
-    "estimate_invalid",
-    "data_stale",
-    "data_gap",
-    "out_of_range",
-    "frozen_signal",
-    "saturated",
-    "outliers",
-    "timing",
-    "oscillation",
-    "storage",
-    "clock",
-)
-
 _PERCENT = number("a percentage", above=0, most=1000)
 _COUNT = number(above=0, most=1e6)
 _SPAN = number(above=0)
@@ -64,11 +48,12 @@ CONTROLLER = record(
         "output_span": _SPAN,
     },
 )
-_ALARM = record(
-    "the settings of an alarm",
-    AlarmSetting,
-    {"priority": choice(PRIORITIES), "on_delay_s": seconds(), "off_delay_s": seconds(), "latching": FLAG},
-)
+_ALARM: dict[str, Callable[[Entry], Any]] = {
+    "priority": choice(PRIORITIES),
+    "on_delay_s": seconds(),
+    "off_delay_s": seconds(),
+    "latching": FLAG,
+}
 
 
 def model(entry: Entry, period_s: float) -> Model:
@@ -89,13 +74,13 @@ def baseline(entry: Entry, period_s: float) -> Baseline:
 
 
 def alarms(entry: Entry) -> dict[str, AlarmSetting]:
-    """The settings of the alarms that are named; the others keep their defaults."""
+    """The settings of the alarms that are named; what they leave out keeps its default."""
     settings: dict[str, AlarmSetting] = {}
     for name, item in entry.mapping("alarm settings under the names of alarms").items():
         below = entry.below(name, item)
-        if name not in ALARMS:
-            below.refuse(f"no such alarm; expected {one_of(name, ALARMS)}")
-        settings[name] = _ALARM(below)
+        if name not in DEFAULT_ALARMS:
+            below.refuse(f"no such alarm; expected {one_of(name, DEFAULT_ALARMS)}")
+        settings[name] = replace(DEFAULT_ALARMS[name], **Section(below, _ALARM).values(_ALARM))
         if name == "plant_shift" and settings[name].on_delay_s > 0:
             below.refuse("plant_shift has no on-delay; remove on_delay_s, or delay plant_drift")
     return settings
