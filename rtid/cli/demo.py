@@ -49,7 +49,7 @@ def add(subparsers: Subparsers) -> None:
 
 
 def run(args: argparse.Namespace) -> int:
-    logs.start(level=logging.WARNING, tracebacks=args.debug)
+    logs.start(level=logging.ERROR, tracebacks=args.debug)
     ageing = Ageing(CHANGE_SHARE * args.seconds, CHANGE_LENGTH_SHARE * args.seconds)
     conveyor = Conveyor(seed=args.seed, period_s=PERIOD_S, ageing=ageing)
     with _folder(keep=args.keep) as folder, PlantFeed(conveyor.row, period_s=PERIOD_S) as feed:

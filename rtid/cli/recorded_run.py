@@ -40,14 +40,14 @@ class RecordedRun:
         begin = time.monotonic()
         with ExitStack() as open_files:
             for name, loop in self._pipeline.loops.items():
-                trend = TrendFile(self._folder / f"{name}.trend.csv", tuple(loop.report.quantities))
+                trend = TrendFile(self._folder / f"{name}.trend.csv", tuple(loop.snapshot("columns")["quantities"]))
                 self._trends[name] = open_files.enter_context(trend)
             end = self._read()
         for name, loop in self._pipeline.loops.items():
             self.snapshots[name] = messages.snapshot(loop.snapshot("end of the data"), node=self._node.name, stamp=end)
             write_json(self._folder / f"{name}.snapshot.json", self.snapshots[name])
         document = summary(
-            [loop.report for loop in self._pipeline.loops.values()],
+            [self._pipeline.report(name, end) for name in self._pipeline.loops],
             self._tally,
             samples=self._pipeline.rows,
             wall_s=time.monotonic() - begin,

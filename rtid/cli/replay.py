@@ -52,6 +52,7 @@ def run(args: argparse.Namespace) -> int:
         separator=args.separator, decimal=args.decimal, time_format=args.time_format, time_column=args.time_column
     )
     feeds = [_feed(node, text, layout) for text in args.feed]
+    _refuse_twice([feed.name for feed in feeds])
     _refuse_unfed(node, {feed.name for feed in feeds})
     recorded = RecordedRun(node, feeds, make_folder(args.out))
     document = recorded.run()
@@ -71,6 +72,12 @@ def _feed(node: Node, text: str, layout: CsvLayout) -> RecordedFeed:
     periods = [loop.period_s for loop in node.loops.values() if not set(signals).isdisjoint(loop.signals)]
     restart_after_s = RESTART_PERIODS * min(periods, default=0.0)
     return RecordedFeed(name, path, signals=signals, layout=layout, restart_after_s=restart_after_s)
+
+
+def _refuse_twice(names: list[str]) -> None:
+    twice = next((name for name in names if names.count(name) > 1), None)
+    if twice is not None:
+        raise UsageError(f"source {twice} is fed twice; give one --feed for each source")
 
 
 def _refuse_unfed(node: Node, fed: set[str]) -> None:

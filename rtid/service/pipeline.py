@@ -44,6 +44,20 @@ class Pipeline:
         if report is not None:
             self._deliver(report)
 
+    def report(self, name: str, stamp: float) -> Report:
+        """The latest report of a loop; before its first reading one that says so, and that is due."""
+        return self.loops[name].report or Report(
+            loop=name,
+            time_s=stamp,
+            stamp=stamp,
+            samples=0,
+            state="waiting",
+            health="function_check",
+            since=stamp,
+            reason="waiting: no reading yet",
+            due=True,
+        )
+
     def _advance(self, name: str, blocks: Iterable[Rows]) -> None:
         for rows in blocks:
             self.rows += len(rows.values)

@@ -59,6 +59,8 @@ class Service:
             self._say_start(folder)
             if publisher is not None:
                 publisher.start(messages.status(self._node.name, stamp=time.time(), loops=self._node.loops))
+            for name in self._node.loops:  # what the broker kept of the last run is not true any more
+                outlets.publish(self._pipeline.report(name, time.time()))
             try:
                 self._serve(self._pipeline, intakes)
                 self._finish(self._pipeline, outlets)
@@ -122,9 +124,9 @@ class Service:
             pipeline.silence(name, seconds=seconds, stamp=time.time())
 
     def _finish(self, pipeline: Pipeline, outlets: Outlets) -> None:
-        for name, loop in pipeline.loops.items():
+        for name in pipeline.loops:
             pipeline.flush(name, time.time())
-            outlets.publish(replace(loop.report, due=True))
+            outlets.publish(replace(pipeline.report(name, time.time()), due=True))
 
     def _make_publisher(self) -> MqttPublisher | None:
         node = self._node

@@ -101,15 +101,6 @@ def test_it_starts_without_broker_and_port_says_so_and_refuses_a_second_one(tmp_
         assert any(words in line for line in service.stderr)
 
 
-def test_a_state_directory_that_cannot_be_made_is_73(tmp_path: Path) -> None:
-    path = configure(tmp_path)
-    (tmp_path / "state").write_text("a file in its place")
-    ended = rtid("run", path)
-    assert ended.returncode == 73
-    assert ended.stderr.startswith(f"rtid: {tmp_path}/state: ")
-    assert ended.stderr.count("\n") == 1
-
-
 def test_data_that_stop_make_the_loop_stale(tmp_path: Path, mqtt5_broker: Broker) -> None:
     with PtyDevice(tmp_path / "board") as board, Listener(mqtt5_broker.port, "rtid/#") as listener:
         path = configure(tmp_path, board.port, broker=mqtt5_broker.port, stale_after_s=1.0)
