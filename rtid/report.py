@@ -26,7 +26,7 @@ class Quantity:
 
 @dataclass(frozen=True, slots=True)
 class Drift:
-    """How far the plant is from its baseline. `ratio` is the largest statistic over its threshold (None: no baseline)."""
+    """How far the plant is from its baseline. `ratio`: largest statistic over its threshold (None: no baseline)."""
 
     ratio: float | None = None
     worst_quantity: str | None = None

@@ -1,0 +1,151 @@
+"""The output-error estimate that follows the plant, one block at a time.
+
+Recursive prediction-error method (Ljung, System Identification, 2nd ed., ch. 11) in information form, parameters held
+for a block; residuals clipped (Huber), offset walking, noise model renewed on the way.
+"""
+
+from __future__ import annotations
+
+from dataclasses import replace
+
+import numpy as np
+from numpy.typing import NDArray
+
+from rtid.identify.forgetting import SubspaceForgetting
+from rtid.identify.gauss_newton import HUBER, SIGMA_FLOOR
+from rtid.identify.record import Record
+from rtid.identify.simulated import Plant, run_record
+from rtid.identify.structure import Fit
+from rtid.identify.whitening import Whitener, autocovariance, autoregression
+
+Array = NDArray[np.float64]
+Mask = NDArray[np.bool_]
+
+_LOG_STEP = 0.3
+_RENEW_EVERY = 8  # blocks between two noise models
+
+
+class FollowingEstimator:
+    """`structure.Estimator` for an output-error model. `memory`: rows after which a datum counts 1/e."""
+
+    def __init__(self, plant: Plant, fit: Fit, record: Record, *, memory: float) -> None:
+        self._plant = plant
+        self._fit = fit
+        self._memory = memory
+        residual, psi, ok, self._predictor = run_record(plant, record, fit)
+        self._whitener = Whitener(len(fit.theta))
+        self._whitener.coefficients = fit.ar
+        self._whitener.run(residual[-16:], psi[-16:], ok[-16:])
+        finite = record.output[np.isfinite(record.output)]
+        self._spread = float(np.std(finite))
+        self._free = np.flatnonzero(plant.free)
+        self._prior = plant.prior.copy()
+        self._prior[-1] = max(self._spread, 1e-9)
+        self._covariance = fit.covariance[np.ix_(self._free, self._free)]
+        self._forgetting = self._start_information()
+        self._noise = autocovariance(residual, ok)
+        self._weight = float(min(memory, max(1, ok.sum())))
+        self._variance = fit.sigma**2
+        self._blocks = 0
+        self.invalid = False
+
+    @property
+    def fit(self) -> Fit:
+        return self._fit
+
+    def step(self, inputs: Array, output: Array, ok: Mask) -> tuple[Array, Array, Mask]:
+        """Learn from the next m rows: residuals e (one step) and ε (simulated) before learning, rows that count."""
+        residual, psi, ok = self._predictor.run(inputs, output, ok)
+        e, phi, good = self._whitener.run(residual, psi, ok)
+        self._learn(e[good], phi[good][:, self._free], psi[-2:])
+        self._learn_noise(residual, ok, e[good])
+        return e, residual, good
+
+    def restart(self, inputs: Array) -> None:
+        self._predictor.restart(inputs)
+        self._whitener.break_off()
+
+    def loosen(self) -> None:
+        self._covariance = self._covariance + np.diag(self._prior[self._free] ** 2)
+        information = np.asarray(np.linalg.inv(self._covariance), dtype=np.float64)
+        self._forgetting = SubspaceForgetting(information, np.zeros_like(information), self._prior[self._free])
+
+    def informed(self) -> Mask:
+        known = np.zeros(len(self._fit.theta), dtype=np.bool_)
+        known[self._free] = self._forgetting.informed()
+        return known
+
+    def _start_information(self) -> SubspaceForgetting:
+        information = np.asarray(np.linalg.inv(self._covariance + 1e-18 * np.eye(len(self._free))), dtype=np.float64)
+        share = min(1.0, self._memory / max(1, self._fit.rows))
+        return SubspaceForgetting(information, share * information, self._prior[self._free])
+
+    def _learn(self, e: Array, phi: Array, last_psi: Array) -> None:
+        if len(e) == 0:
+            return
+        sigma = self._fit.sigma
+        scaled, unit = phi / sigma, np.clip(e / sigma, -HUBER, HUBER)
+        self._forgetting.forget(float(np.exp(-len(e) / self._memory)))
+        self._walk(len(e))
+        gained = self._forgetting.add(scaled)
+        gain = np.linalg.inv(self._forgetting.information)
+        step = self._limited(gain @ (scaled.T @ unit))
+        keep = np.eye(len(step)) - gain @ gained
+        covariance = keep @ self._covariance @ keep.T + gain @ gained @ gain
+        if not (np.isfinite(step).all() and np.isfinite(covariance).all()):
+            self.invalid = True
+            return
+        self._covariance = covariance
+        self._move(step, last_psi)
+
+    def _walk(self, rows: int) -> None:
+        """The offset is loose: an unmeasured load must not be read as gain."""
+        slowest = self._plant.time_constants(self._fit.theta)[0]
+        variance = 1e-4 * self._spread**2 * min(1.0, self._plant.period / slowest) ** 2 * rows
+        self._forgetting.loosen(len(self._free) - 1, variance)
+        self._covariance[-1, -1] += variance
+
+    def _limited(self, step: Array) -> Array:
+        limit = np.full(len(self._plant.names), _LOG_STEP)
+        limit[-2], limit[-1] = self._plant.period, np.inf
+        bound = limit[self._free]
+        return np.asarray(np.minimum(np.maximum(step, -bound), bound))
+
+    def _move(self, step: Array, last_psi: Array) -> None:
+        theta = self._fit.theta.copy()
+        theta[self._free] += step
+        theta = self._plant.within(theta)
+        moved = theta - self._fit.theta
+        moved[-1] = 0.0
+        shifts = last_psi @ moved
+        model = self._plant.model(theta, self._fit.sign)
+        self._predictor.shift(theta, model, (float(shifts[-1]), float(shifts[0]) if len(shifts) > 1 else 0.0))
+        p = len(theta)
+        covariance = np.zeros((p, p))
+        covariance[np.ix_(self._free, self._free)] = self._covariance
+        self._fit = replace(self._fit, theta=theta, covariance=covariance, rows=self._fit.rows + 1)
+
+    def _learn_noise(self, residual: Array, ok: Mask, e: Array) -> None:
+        if len(e) == 0:
+            return
+        keep = float(np.exp(-len(e) / self._memory))
+        bound = 4.0 * np.sqrt(self._noise[0]) + self._floor
+        fresh = autocovariance(np.clip(residual, -bound, bound), ok)
+        self._noise = keep * self._noise + (1.0 - keep) * fresh
+        self._weight = min(self._memory, self._weight + len(e))
+        clipped = np.clip(e, -HUBER * self._fit.sigma, HUBER * self._fit.sigma)
+        self._variance = keep * self._variance + (1.0 - keep) * float(np.mean(clipped**2))
+        self._blocks += 1
+        if self._blocks % _RENEW_EVERY == 0:
+            self._whitener.coefficients = autoregression(self._noise, self._weight)
+        self._fit = replace(
+            self._fit,
+            sigma=max(float(np.sqrt(self._variance)), self._floor),
+            noise=float(np.sqrt(self._noise[0])),
+            ar=self._whitener.coefficients,
+            noise_rows=self._weight,
+        )
+
+    @property
+    def _floor(self) -> float:
+        return max(SIGMA_FLOOR * self._spread, 1e-12)

@@ -1,0 +1,144 @@
+"""The life of alarms: on-delay, off-delay, latching, acknowledgement (ISA-18.2, IEC 62682), all in data time."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass, replace
+
+from rtid.report import ActiveAlarm, Transition, TransitionName
+from rtid.settings import DEFAULT_ALARMS, AlarmSetting
+
+_SHARPER = 0.4
+
+
+@dataclass(frozen=True, slots=True)
+class Finding:
+    """What a check found about one alarm condition at one time."""
+
+    present: bool
+    text: str = ""
+    quantity: str | None = None
+    change_pct: float | None = None
+    low_pct: float | None = None
+    high_pct: float | None = None
+
+
+@dataclass(slots=True)
+class _Entry:
+    pending_since: float | None = None  # data time at which the condition began or ended and still waits for its delay
+    active: ActiveAlarm | None = None
+    acknowledged: bool = False
+    clear: bool = True  # the condition is absent though the alarm may be latched
+    last: Finding = Finding(False)
+
+
+class AlarmBook:
+    """All alarms of one loop. `settings`: per alarm name; names not in it have the contract's defaults."""
+
+    def __init__(self, settings: Mapping[str, AlarmSetting]) -> None:
+        self._settings = DEFAULT_ALARMS | dict(settings)
+        self._entries: dict[tuple[str, str | None], _Entry] = {}
+        self._transitions: list[Transition] = []
+
+    def note(self, alarm: str, finding: Finding, *, time_s: float, stamp: float, signal: str | None = None) -> None:
+        """Tell the book whether a condition is present now; it makes the transitions that are due."""
+        entry = self._entries.get((alarm, signal))
+        if entry is None:
+            if not finding.present:
+                return
+            entry = self._entries[(alarm, signal)] = _Entry()
+        setting = self._settings[alarm]
+        key = (alarm, signal)
+        if entry.active is None:
+            self._maybe_raise(key, entry, finding, time_s, stamp)
+        elif finding.present:
+            entry.pending_since = None
+            entry.clear = False
+            if finding.quantity != entry.last.quantity or _sharper(finding, entry.last):
+                self._emit(key, entry, "updated", finding, time_s, stamp)
+        else:
+            entry.clear = True
+            self._maybe_clear(key, entry, setting, time_s, stamp)
+
+    def acknowledge(self, alarm: str, *, time_s: float, stamp: float, by: str, signal: str | None = None) -> bool:
+        """False when there is nothing to acknowledge."""
+        entry = self._entries.get((alarm, signal))
+        if entry is None or entry.acknowledged:
+            return False
+        entry.acknowledged = True
+        retain = entry.active is not None and not entry.clear
+        self._transitions.append(
+            self._transition((alarm, signal), "acknowledged", entry.last, time_s, stamp, by=by, retain=retain)
+        )
+        if entry.active is not None and entry.clear:
+            self._finish((alarm, signal), entry, time_s, stamp)
+        elif entry.active is None:
+            del self._entries[(alarm, signal)]
+        else:
+            entry.active = replace(entry.active, acknowledged=True)
+        return True
+
+    def take_transitions(self) -> tuple[Transition, ...]:
+        taken, self._transitions = tuple(self._transitions), []
+        return taken
+
+    def is_active(self, alarm: str) -> bool:
+        return any(name == alarm and entry.active is not None for (name, _), entry in self._entries.items())
+
+    def active(self) -> tuple[ActiveAlarm, ...]:
+        return tuple(entry.active for entry in self._entries.values() if entry.active is not None)
+
+    def _maybe_raise(self, key: tuple[str, str | None], entry: _Entry, finding: Finding, *when: float) -> None:
+        if not finding.present:
+            entry.pending_since = None
+            return
+        time_s, stamp = when
+        entry.pending_since = time_s if entry.pending_since is None else entry.pending_since
+        setting = self._settings[key[0]]
+        if time_s - entry.pending_since >= setting.on_delay_s:
+            entry.pending_since, entry.clear, entry.acknowledged = None, False, False
+            entry.active = ActiveAlarm(key[0], setting.priority, stamp, finding.text, key[1], finding.quantity)
+            self._emit(key, entry, "active", finding, time_s, stamp)
+
+    def _maybe_clear(self, key: tuple[str, str | None], entry: _Entry, setting: AlarmSetting, *when: float) -> None:
+        time_s, stamp = when
+        entry.pending_since = time_s if entry.pending_since is None else entry.pending_since
+        held = setting.latching and not entry.acknowledged
+        if time_s - entry.pending_since >= setting.off_delay_s and not held:
+            self._finish(key, entry, time_s, stamp)
+
+    def _finish(self, key: tuple[str, str | None], entry: _Entry, time_s: float, stamp: float) -> None:
+        text = f"back to normal: {key[0].replace('_', ' ')}"
+        finding = replace(entry.last, present=False, text=text)
+        entry.active, entry.pending_since = None, None
+        self._transitions.append(
+            self._transition(key, "cleared", finding, time_s, stamp, retain=not entry.acknowledged)
+        )
+        entry.last = finding
+        if entry.acknowledged:
+            del self._entries[key]
+
+    def _emit(
+        self, key: tuple[str, str | None], entry: _Entry, name: TransitionName, finding: Finding, *when: float
+    ) -> None:
+        assert entry.active is not None
+        entry.active = replace(entry.active, text=finding.text, quantity=finding.quantity)
+        entry.last = finding
+        self._transitions.append(self._transition(key, name, finding, *when))
+
+    def _transition(
+        self, key: tuple[str, str | None], name: TransitionName, finding: Finding, *when: float,
+        by: str | None = None, retain: bool = True,
+    ) -> Transition:  # fmt: skip
+        return Transition(
+            alarm=key[0], transition=name, priority=self._settings[key[0]].priority, text=finding.text,
+            time_s=when[0], stamp=when[1], signal=key[1], quantity=finding.quantity, change_pct=finding.change_pct,
+            low_pct=finding.low_pct, high_pct=finding.high_pct, by=by, retain=retain,
+        )  # fmt: skip
+
+
+def _sharper(now: Finding, told: Finding) -> bool:
+    """The limits are so much narrower than what was told that a person should hear it again."""
+    if now.low_pct is None or now.high_pct is None or told.low_pct is None or told.high_pct is None:
+        return False
+    return now.high_pct - now.low_pct < _SHARPER * (told.high_pct - told.low_pct)

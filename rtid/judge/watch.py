@@ -1,0 +1,177 @@
+"""After the baseline: run it beside the plant, score the difference, decide what has changed, tell the alarm book."""
+
+from __future__ import annotations
+
+import math
+
+import numpy as np
+from numpy.typing import NDArray
+
+from rtid.identify.structure import Estimator, Structure
+from rtid.judge import wording
+from rtid.judge.alarms import AlarmBook, Finding
+from rtid.judge.baseline import PROMISED_ROWS, Baseline, Follower
+from rtid.judge.change import Judged, QuantityChange, leader, surest
+from rtid.judge.score import DriftScore
+from rtid.report import Drift
+from rtid.settings import Loop as LoopSettings
+
+Array = NDArray[np.float64]
+Mask = NDArray[np.bool_]
+
+_MOVING = 4.0  # standard errors between two looks at an estimate that has not come to rest
+_TRANSIENT = 0.6  # of dead time and five time constants: what the change itself stirs up has died down
+_POWER_95 = 7.2  # deviations between the threshold at 1e5 rows and a change seen with 95 % power
+
+
+class Watch:
+    """One baseline and its detectors."""
+
+    def __init__(
+        self, settings: LoopSettings, structure: Structure, baseline: Baseline, follower: Follower, *,
+        tolerances: dict[str, float],
+    ) -> None:  # fmt: skip
+        self.baseline = baseline
+        self.identity = f"{settings.name}-1"
+        self._settings = settings
+        self._follower = follower
+        self._judged = Judged(structure, baseline, tolerances)
+        self._patience = max(settings.block_rows, math.ceil(_TRANSIENT * structure.settling_rows(baseline.fit)))
+        self._rows = 0
+        self._score = DriftScore(
+            baseline.covariance,
+            baseline.gamma0,
+            block_rows=settings.block_rows,
+            budget_rows=settings.alarm_budget.rows_per_false_alarm(settings.period_s),
+            walk=offset_walk(structure, baseline),
+        )
+        self._named: str | None = None  # the quantity that `plant_drift` names while it stands
+        self._hint = "undecided"  # what `plant_shift` names
+        self._flagged_rows = 0
+        self._looks = 0  # at the estimate since the flag, one each `patience` rows
+        self._seen: Array | None = None  # the estimate at the last look
+
+    @property
+    def provisional(self) -> bool:
+        return self.baseline.fit.rows + self._rows < PROMISED_ROWS
+
+    @property
+    def unchanged(self) -> str:
+        return wording.unchanged_text(self.baseline.stamp, provisional=self.provisional)
+
+    def restart(self, inputs: Array) -> None:
+        self._follower.restart(inputs)
+
+    def step(
+        self, inputs: Array, output: Array, ok: Mask, *,
+        estimator: Estimator, book: AlarmBook, when: tuple[float, float],
+    ) -> None:  # fmt: skip
+        """Judge the next m rows. `estimator` has learnt from them; `when`: data time and stamp of the block's end."""
+        e, phi = self._follower.run(inputs, output, ok)
+        flagged = self._score.ratio >= 1.0
+        self._score.step(e, phi, frozen=flagged or self._judged.half_used(self._score.learnt))
+        self._rows += len(e)
+        self._flagged_rows = self._flagged_rows + len(e) if self._score.ratio >= 1.0 else 0
+        if self._flagged_rows or self._named:
+            self._relearn(estimator)
+            self._decide(self._judged.assess(estimator.fit), book, when)
+        else:
+            self._hint, self._looks, self._seen = "undecided", 0, None
+            book.note("plant_shift", Finding(False), time_s=when[0], stamp=when[1])
+        self._note_blindness(book, when)
+
+    def drift(self, estimator: Estimator, last_informative: float | None) -> Drift:
+        changes = self._judged.assess(estimator.fit)
+        worst = surest(changes) if changes else None
+        return Drift(
+            ratio=self._score.ratio,
+            worst_quantity=worst.name if worst else None,
+            change_pct=worst.change_pct if worst else None,
+            low_pct=worst.low_pct if worst else None,
+            high_pct=worst.high_pct if worst else None,
+            detectable_gain_pct=self.detectable_gain_pct(),
+            last_informative=last_informative,
+        )
+
+    def detectable_gain_pct(self) -> float | None:
+        """Smallest gain change that would be seen within the memory with 95 % power, by recent information."""
+        horizon = self._settings.memory_s / self._settings.period_s
+        power, known = self._score.information()
+        gradient = self._judged.gain_gradient
+        column = int(np.flatnonzero(gradient)[0]) if np.count_nonzero(gradient) == 1 else None
+        if column is None:
+            return self._detectable_by_inverse(power, known, gradient, horizon)
+        information = float(power[column, column])
+        if information <= 0.0:
+            return None
+        g = power[:, column]
+        variance = 1.0 / (information * horizon) + float(g @ known @ g) / information**2
+        return 100.0 * _POWER_95 * math.sqrt(variance)
+
+    def _detectable_by_inverse(self, power: Array, known: Array, gradient: Array, horizon: float) -> float | None:
+        size = np.sqrt(np.maximum(np.diag(power), 1e-300))
+        unit = power / np.outer(size, size) + 1e-9 * np.eye(len(size))
+        g = gradient / size
+        variance = float(g @ np.linalg.solve(unit, g)) / horizon + float(gradient @ known @ gradient)
+        return 100.0 * _POWER_95 * math.sqrt(variance) if math.isfinite(variance) else None
+
+    def _relearn(self, estimator: Estimator) -> None:
+        """Let the estimator learn anew at the flag, when the transient has died down, and while it still moves."""
+        if self._flagged_rows < self._looks * self._patience:
+            return
+        if self._looks < 2 or self._moves(estimator):
+            estimator.loosen()
+            self._seen = None
+        else:
+            self._seen = estimator.fit.theta
+        self._looks = self._flagged_rows // self._patience + 1
+
+    def _moves(self, estimator: Estimator) -> bool:
+        if self._seen is None:
+            return False
+        error = np.sqrt(np.maximum(np.diag(estimator.fit.covariance)[:-1], 1e-300))
+        moved = np.abs(estimator.fit.theta - self._seen)[:-1]
+        return bool(np.any((moved > _MOVING * error) & (moved > 0.0)))
+
+    def _decide(self, changes: list[QuantityChange], book: AlarmBook, when: tuple[float, float]) -> None:
+        time_s, stamp = when
+        by_name = {q.name: q for q in changes}
+        beyond = [q for q in changes if q.beyond] if self._looks > 2 else []
+        named = by_name.get(self._named) if self._named else None
+        if beyond and (named is None or named.within):
+            self._named = surest(beyond).name
+        elif named is not None and named.within:
+            self._named = None
+        drift = self._finding(by_name[self._named]) if self._named in by_name else Finding(False)
+        book.note("plant_drift", drift, time_s=time_s, stamp=stamp)
+        shift = self._flagged_rows > 0 and self._named is None
+        book.note("plant_shift", self._shift_finding(changes) if shift else Finding(False), time_s=time_s, stamp=stamp)
+
+    def _finding(self, change: QuantityChange) -> Finding:
+        text = wording.drift_text(change, self.baseline.stamp)
+        return Finding(True, text, change.name, change.change_pct, change.low_pct, change.high_pct)
+
+    def _shift_finding(self, changes: list[QuantityChange]) -> Finding:
+        found = leader(changes) if self._looks > 2 else None
+        if found is not None and self._hint == "undecided":
+            self._hint = found.name
+        change = next((q for q in changes if q.name == self._hint), None)
+        text = wording.shift_text(change, self.baseline.stamp)
+        if change is None:
+            return Finding(True, text, "undecided")
+        return Finding(True, text, change.name, change.change_pct, change.low_pct, change.high_pct)
+
+    def _note_blindness(self, book: AlarmBook, when: tuple[float, float]) -> None:
+        seen = self.detectable_gain_pct()
+        tolerance = self._settings.tolerance.gain_pct
+        enough_rows = self._rows * self._settings.period_s > self._settings.memory_s
+        blind = enough_rows and (seen is None or seen > tolerance)
+        finding = Finding(blind, wording.blind_text(seen, tolerance))
+        book.note("cannot_judge", finding, time_s=when[0], stamp=when[1])
+
+
+def offset_walk(structure: Structure, baseline: Baseline) -> float:
+    """Variance a row, in units of the noise, by which the offset may walk: an unmeasured load is no plant change."""
+    share = min(1.0, structure.period / structure.slowest(baseline.fit)) ** 2
+    output_power = float(baseline.gamma0[0, 0] + 1.0)
+    return 1e-4 * share * output_power
