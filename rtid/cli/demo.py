@@ -27,6 +27,7 @@ if TYPE_CHECKING:
 
 USUAL_S = 110.0
 LEAST_S = 60.0  # below this there is no room for a baseline and a change
+MOST_SPEED = 20.0  # beyond it the lines no longer come evenly
 BASELINE_SHARE, CHANGE_SHARE, CHANGE_LENGTH_SHARE = 0.27, 0.45, 0.15  # of the whole duration
 
 
@@ -45,6 +46,9 @@ def add(subparsers: Subparsers) -> None:
         help=f"duration, at least {LEAST_S:g} (default {USUAL_S:g})",
     )
     parser.add_argument("--seed", type=int, default=1, metavar="S", help="another seed, another run (default 1)")
+    parser.add_argument(
+        "--speed", type=_speed, default=1.0, metavar="X", help="run the plant so many times faster than a real one"
+    )
     parser.add_argument("--keep", action="store_true", help="leave the folder with configuration, events and snapshot")
 
 
@@ -52,24 +56,24 @@ def run(args: argparse.Namespace) -> int:
     logs.start(level=logging.ERROR, tracebacks=args.debug)
     ageing = Ageing(CHANGE_SHARE * args.seconds, CHANGE_LENGTH_SHARE * args.seconds)
     conveyor = Conveyor(seed=args.seed, period_s=PERIOD_S, ageing=ageing)
-    with _folder(keep=args.keep) as folder, PlantFeed(conveyor.row, period_s=PERIOD_S) as feed:
+    with _folder(keep=args.keep) as folder, PlantFeed(conveyor.row, period_s=PERIOD_S / args.speed) as feed:
         path = folder / "node.yaml"
         text = configuration(feed.port, state_dir=folder / "state", baseline_s=BASELINE_SHARE * args.seconds)
         path.write_text(text, encoding="utf-8")
         story = Story(sys.stdout, ageing=ageing, rows_wanted=round(BASELINE_SHARE * args.seconds / PERIOD_S))
         story.open(feed.port, folder)
-        snapshot = _watch(path, feed, story=story, seconds=args.seconds)
+        snapshot = _watch(path, feed, story=story, args=args)
         _show(snapshot, conveyor, path=folder / "conveyor.snapshot.json", kept=args.keep)
     return story.close()
 
 
-def _watch(path: Path, feed: PlantFeed, *, story: Story, seconds: float) -> dict[str, Any]:
-    """Run the service on the plant for so long; its snapshot at the end."""
+def _watch(path: Path, feed: PlantFeed, *, story: Story, args: argparse.Namespace) -> dict[str, Any]:
+    """Run the service on the plant for so many of the plant's seconds; its snapshot at the end."""
     with RunningService(config.load(path)) as service:
         feed.start()
-        end = time.monotonic() + seconds
+        end = time.monotonic() + args.seconds / args.speed
         while (left := end - time.monotonic()) > 0.0:
-            story.tell(service.news(min(left, 0.2)), seconds - left)
+            story.tell(service.news(min(left, 0.2)), args.seconds - left * args.speed)
         return service.snapshot("conveyor", "end of the demo")
 
 
@@ -91,6 +95,13 @@ def _folder(*, keep: bool) -> Iterator[Path]:
     finally:
         if not keep:
             shutil.rmtree(folder, ignore_errors=True)
+
+
+def _speed(text: str) -> float:
+    value = float(text)
+    if not 0.1 <= value <= MOST_SPEED:
+        raise argparse.ArgumentTypeError(f"{text}: give a factor from 0.1 to {MOST_SPEED:g}")
+    return value
 
 
 def _seconds(text: str) -> float:

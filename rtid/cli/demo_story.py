@@ -64,7 +64,7 @@ class Story:
             self._learnt = True
             self._say(seconds, f"baseline learnt: {_quantities(report.quantities)}")
         if seconds >= self._next_line:
-            self._next_line = seconds + EVERY_S
+            self._next_line = EVERY_S * (seconds // EVERY_S + 1)
             self._say(seconds, self._progress(report))
 
     def _progress(self, report: Report) -> str:

@@ -7,7 +7,7 @@ import signal
 import subprocess
 import sys
 import threading
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from pathlib import Path
 from types import TracebackType
 from typing import Self
@@ -23,22 +23,30 @@ ENVIRONMENT = {
 }
 
 
-def rtid(*arguments: str | Path, timeout: float = 60.0) -> subprocess.CompletedProcess[str]:
-    """Run a command to its end."""
-    return subprocess.run(_command(arguments), env=ENVIRONMENT, capture_output=True, text=True, timeout=timeout)
+def rtid(
+    *arguments: str | Path, timeout: float = 60.0, variables: Mapping[str, str] | None = None
+) -> subprocess.CompletedProcess[str]:
+    """Run a command to its end, with some more environment variables."""
+    environment = ENVIRONMENT | dict(variables or {})
+    return subprocess.run(_command(arguments), env=environment, capture_output=True, text=True, timeout=timeout)
 
 
 class RunningRtid:
     """`with RunningRtid("run", path) as process:` - its stderr and stdout are collected line by line."""
 
-    def __init__(self, *arguments: str | Path) -> None:
+    def __init__(self, *arguments: str | Path, variables: Mapping[str, str] | None = None) -> None:
         self._arguments = arguments
+        self._environment = ENVIRONMENT | dict(variables or {})
         self.stdout: list[str] = []
         self.stderr: list[str] = []
 
     def __enter__(self) -> Self:
         self._process = subprocess.Popen(
-            _command(self._arguments), env=ENVIRONMENT, stdout=subprocess.PIPE, stderr=subprocess.PIPE, text=True
+            _command(self._arguments),
+            env=self._environment,
+            stdout=subprocess.PIPE,
+            stderr=subprocess.PIPE,
+            text=True,
         )
         self._readers = [
             threading.Thread(target=kept.extend, args=(stream,), daemon=True)
@@ -61,7 +69,9 @@ class RunningRtid:
 
     def wait_for_line(self, words: str, seconds: float = 10.0) -> None:
         """Until a line on stderr or stdout holds `words`."""
-        wait_until(lambda: self._said(words) or self._process.poll() is not None, seconds, what=f"a line with {words!r}")
+        wait_until(
+            lambda: self._said(words) or self._process.poll() is not None, seconds, what=f"a line with {words!r}"
+        )
         assert self._said(words), f"the process ended without {words!r}: {''.join(self.stderr)}"
 
     def _said(self, words: str) -> bool:
