@@ -22,7 +22,6 @@ class Blocks:
         self._period = loop.period_s
         self._output = loop.signals.index(loop.output)
         self._line = line
-        self._restart = False
         self._shift = 0.0  # of the last block that had an output, in periods
         self.begin(restart=False)
 
@@ -34,7 +33,7 @@ class Blocks:
         self._last: int | None = None  # last tick that had an output
         self._missing: list[list[float]] = []  # rows of the ticks since, without output, while they may be bridged
         self._gap_s = 0.0
-        self._restart = self._restart or restart
+        self._restart = restart
 
     def add(self, tick: int, row: list[float], *, offset: float, stamp: float) -> list[Rows]:
         """Row `tick`, its output NaN when it is missing. Returns the blocks that it closes."""

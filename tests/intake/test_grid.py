@@ -173,6 +173,13 @@ def test_a_hole_that_a_flush_falls_into_is_still_bridged() -> None:
     assert (rows[0].first, rows[0].gap_s) == (13, 0.0)
 
 
+def test_in_blocks_of_one_a_bridged_tick_is_a_block_of_its_own() -> None:
+    grid = started(told(period_s=3.0))
+    rows = feed(grid, [both(36.0), both(42.0)]) + grid.flush(0.0)
+    assert [(r.first, r.gap_s) for r in rows] == [(12, 0.0), (13, 0.0), (14, 0.0)]
+    assert math.isnan(rows[1].values[0, 1])
+
+
 @pytest.mark.parametrize("value", [math.nan, math.inf, -math.inf, 1e200])
 def test_a_value_that_is_not_finite_even_squared_is_rejected_alone(value: float) -> None:
     grid = started(told())

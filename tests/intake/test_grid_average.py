@@ -202,6 +202,34 @@ def test_rows_flushed_before_the_decision_are_not_averaged_and_the_count_begins_
     assert [rows[k][1] for k in (3, 4, 9)] == pytest.approx([2.95, 3.95, 8.95])
 
 
+def test_after_an_early_flush_the_eight_deciding_ticks_are_counted_again() -> None:
+    grid = Grid(told())
+    readings = sampled(2, 24, u=lambda t: t, y=lambda t: 0.0)
+    feed(grid, readings[:13])
+    grid.flush(0.0)
+    rows = by_tick(feed(grid, readings[13:]))
+    assert rows[9] == [9.25, 0.0]
+
+
+def test_a_fast_input_for_a_flushed_tick_is_held_from_there() -> None:
+    grid = Grid(told())
+    feed(grid, sampled(10, 12.05, u=lambda t: t, y=lambda t: 0.0))
+    grid.flush(0.0)  # tick 12 is closed: the readings at 11.5 … 11.9 are nearest to it
+    feed(grid, [only_input(12.6, 55.0), only_output(13.0, 1.0)])
+    assert by_tick(grid.flush(0.0)) == {13: [55.0, 1.0]}
+    assert grid.rejected == {}
+
+
+def test_a_fast_output_for_a_flushed_tick_is_late() -> None:
+    grid = Grid(told())
+    outputs = [only_output(j / 2 + 0.3, 1.0) for j in range(25)]  # windows begin 0.45 before the tick
+    feed(grid, [only_input(0.0, 0.0), *outputs])
+    grid.flush(0.0)  # up to 12.3
+    feed(grid, [only_output(12.52, 99.0), only_output(13.3, 2.0)])
+    assert by_tick(grid.flush(0.0)) == {13: [0.0, 2.0]}
+    assert grid.rejected == {"late": 1}
+
+
 def test_a_crowd_of_readings_on_the_deciding_ticks_decides_at_once() -> None:
     per_period = CROWD
     grid = Grid(told(period_s=3.0))

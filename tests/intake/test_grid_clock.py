@@ -39,6 +39,27 @@ def test_an_input_read_before_a_jump_ahead_is_held_over_it() -> None:
     assert {row[0] for row in by_tick(grid.flush(0.0)).values()} == {42.0}
 
 
+def test_missing_ticks_right_before_a_jump_ahead_make_no_rows() -> None:
+    grid = started(told())
+    ahead = [only_input(1000.0, 1.0), only_input(1000.0, 1.0), only_output(997.0, 1.0)]
+    rows = feed(grid, [both(12.0), only_input(13.0, 1.0), *ahead]) + grid.flush(0.0)
+    assert sorted(by_tick(rows)) == [12, 997]
+
+
+def test_a_topic_that_lags_by_a_tick_is_not_late_after_a_jump_ahead() -> None:
+    grid = started(told())
+    feed(grid, [only_input(1000.0, 1.0), only_input(1001.0, 1.0), only_output(999.0, 5.0)])
+    assert by_tick(grid.flush(0.0)) == {999: [11.0, 5.0]}
+    assert grid.rejected == {}
+
+
+def test_a_topic_that_lags_does_not_take_the_newest_time_back() -> None:
+    grid = started(told())
+    feed(grid, [only_input(14.0, 1.0), only_output(12.0, 2.0), only_input(23.5, 3.0), only_output(22.0, 4.0)])
+    assert by_tick(grid.flush(0.0))[22] == [1.0, 4.0]
+    assert grid.rejected == {}
+
+
 def test_the_block_after_a_gap_ends_at_its_own_boundary() -> None:
     grid = started(told())
     rows = feed(grid, [both(1001.0 + k) for k in range(12)])
