@@ -71,7 +71,8 @@ def _scan(plant: Plant, record: Record, pole: float) -> Iterator[Candidate]:
         best = int(np.argmin(losses))
         if gains[best] == 0.0 or not np.isfinite(losses[best]):
             continue
-        theta = np.array([math.log(abs(gains[best])), *shape, delays[best] * plant.period, offsets[best] / (1.0 - pole)])
+        offset = offsets[best] / (1.0 - pole)
+        theta = np.array([math.log(abs(gains[best])), *shape, delays[best] * plant.period, offset])
         yield Candidate(float(losses[best]), _start_fit(plant, theta, gains[best], centre))
 
 
@@ -113,7 +114,7 @@ def _whiten(values: Array, pole: float) -> Array:
 
 
 def _solve(x: Array, y: Array, free: Array) -> tuple[Array, Array, Array]:
-    """Least squares of y (m,) on each row of x (c, m), a constant and the free response: loss, gain and offset, (c,)."""
+    """Least squares of y (m,) on each row of x (c, m), a constant and the free response: loss, gain, offset, (c,)."""
     basis, _ = np.linalg.qr(np.column_stack((np.ones(len(y)), free)))
     y_left = y - basis @ (basis.T @ y)
     x_parts = x @ basis

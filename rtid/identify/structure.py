@@ -57,7 +57,7 @@ class Estimator(Protocol):
     def fit(self) -> Fit: ...
 
     def step(self, inputs: Array, output: Array, ok: Mask) -> tuple[Array, Array, Mask]:
-        """Learn from the next m rows: one-step and free-run error before learning, and the rows that count, each (m,)."""
+        """Learn from the next m rows: one-step and free-run error before learning, rows that count, each (m,)."""
         ...
 
     def informed(self) -> Mask:
