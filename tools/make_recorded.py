@@ -4,7 +4,7 @@
     python tools/make_recorded.py NAME ...   only these
 
 Each NAME.csv is made from a simulated plant with a fixed seed. NAME.expected.json names the state, alarms and
-quantities that a replay must show, taken from the plant and not from the program, with bands that leave room for chance.
+quantities that a replay must show: taken from the plant, not from the program, with bands that leave room for chance.
 """
 
 from __future__ import annotations
@@ -72,14 +72,6 @@ BELT = two_lags(2.0, 0.5, 0.08, dead_time_s=0.03, noise=0.5)
 OVEN = first_order(1.5, 20.0, dead_time_s=3.0, offset=20.0, noise=0.15)
 
 
-def steady() -> Stream:
-    """Nothing happens to the plant."""
-    drive = random_steps(8000, low=20.0, high=80.0, hold=(30, 150), seed=11)
-    return _belt(drive, story="belt drive under set-point changes; nothing happens to it",
-                 expected={"state": "watching", "never": ["plant_drift"],
-                           "quantities": _belt_quantities(BELT)})  # fmt: skip
-
-
 def gain_falls() -> Stream:
     drive = random_steps(9000, low=20.0, high=80.0, hold=(30, 150), seed=12)
     weak = replace(BELT, gain=1.5)
@@ -89,7 +81,7 @@ def gain_falls() -> Stream:
                            "quiet_until_s": 50.0})  # fmt: skip
 
 
-def quiet_steady_moving_drifting() -> Stream:
+def rest_and_moves() -> Stream:
     """No excitation, then set-point moves, then a rest, then moves of a slower plant."""
     moves = random_steps(6000, low=20.0, high=80.0, hold=(30, 150), seed=13)
     drive = np.concatenate([np.full(1000, 50.0), moves, np.full(1500, 50.0), moves[:3000]])
@@ -132,9 +124,8 @@ def _belt_quantities(plant: LinearPlant) -> dict[str, list[float]]:
 
 
 STREAMS: dict[str, Callable[[], Stream]] = {
-    "steady": steady,
     "gain_falls": gain_falls,
-    "rest_and_moves": quiet_steady_moving_drifting,
+    "rest_and_moves": rest_and_moves,
     "gap": gap,
     "oven": oven,
 }

@@ -74,7 +74,9 @@ def _watch(path: Path, feed: PlantFeed, *, story: Story, args: argparse.Namespac
         end = time.monotonic() + args.seconds / args.speed
         while (left := end - time.monotonic()) > 0.0:
             story.tell(service.news(min(left, 0.2)), args.seconds - left * args.speed)
-        return service.snapshot("conveyor", "end of the demo")
+        snapshot = service.snapshot("conveyor", "end of the demo")  # taken behind every line that was read
+        story.tell(service.news(0.0), args.seconds)
+        return snapshot
 
 
 def _show(snapshot: dict[str, Any], conveyor: Conveyor, *, path: Path, kept: bool) -> None:

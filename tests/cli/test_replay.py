@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import csv
 import json
+from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
 
@@ -41,36 +42,50 @@ def read(path: Path) -> dict[str, Any]:
     return document
 
 
-def test_it_leaves_a_snapshot_a_trend_events_and_a_summary(
-    tmp_path: Path, table: list[tuple[float, float, float]], capsys: pytest.CaptureFixture[str]
-) -> None:
-    assert replay(tmp_path, write(tmp_path / "drive.csv", table)) == 0
-    out = tmp_path / "out"
-    assert {path.name for path in out.iterdir()} == {
-        "belt.snapshot.json",
-        "belt.trend.csv",
-        "events.jsonl",
-        "summary.json",
-    }
-    snapshot, summary = read(out / "belt.snapshot.json"), read(out / "summary.json")
+@dataclass(frozen=True)
+class Done:
+    """A replay of the whole table that has ended well."""
+
+    folder: Path
+    said: str
+
+    @property
+    def out(self) -> Path:
+        return self.folder / "out"
+
+
+@pytest.fixture(scope="module")
+def done(table: list[tuple[float, float, float]], tmp_path_factory: pytest.TempPathFactory) -> Done:
+    folder = tmp_path_factory.mktemp("replay")
+    recorded = write(folder / "drive.csv", table)
+    ended = rtid("replay", configure(folder), "--feed", f"drive={recorded}", "--out", folder / "out")
+    assert (ended.returncode, ended.stderr) == (0, "")
+    return Done(folder, ended.stdout)
+
+
+def test_it_leaves_a_snapshot_a_trend_events_and_a_summary(done: Done) -> None:
+    names = {"belt.snapshot.json", "belt.trend.csv", "events.jsonl", "summary.json"}
+    assert {path.name for path in done.out.iterdir()} == names
+    snapshot, summary = read(done.out / "belt.snapshot.json"), read(done.out / "summary.json")
     jsonschema.validate(snapshot, schemas.load("snapshot"))
     jsonschema.validate(summary, schemas.load("summary"))
     assert snapshot["time"] == "1970-01-01T00:00:29.990Z"
     assert snapshot["quantities"]["gain"]["value"] == pytest.approx(PLANT.gain, rel=0.03)
     assert summary["samples"] == ROWS
     assert summary["loops"]["belt"]["state"] == snapshot["state"] == "watching"
-    assert not (tmp_path / "state").exists()
-    said = capsys.readouterr()
-    assert "belt: watching" in said.out
-    assert "gain " in said.out
-    assert said.err == ""
+    assert not (done.folder / "state").exists()
 
 
-def test_the_trend_has_a_row_per_second_and_its_columns_by_the_contract(
-    tmp_path: Path, table: list[tuple[float, float, float]]
-) -> None:
-    assert replay(tmp_path, write(tmp_path / "drive.csv", table)) == 0
-    with (tmp_path / "out" / "belt.trend.csv").open() as file:
+def test_it_ends_with_a_short_summary_in_plain_words(done: Done) -> None:
+    first, second, *rest = done.said.splitlines()
+    assert first.startswith(f"{ROWS} rows in ")
+    assert second == "belt: watching, good"
+    assert rest[0].split()[0] == "gain"
+    assert rest[-1].startswith("  alarms: ")
+
+
+def test_the_trend_has_a_row_per_second_and_its_columns_by_the_contract(done: Done) -> None:
+    with (done.out / "belt.trend.csv").open() as file:
         rows = list(csv.DictReader(file))
     assert list(rows[0])[:5] == ["time_s", "state", "health", "drift_ratio", "worst_quantity"]
     assert list(rows[0])[5:8] == ["gain", "gain_low", "gain_high"]
@@ -79,15 +94,18 @@ def test_the_trend_has_a_row_per_second_and_its_columns_by_the_contract(
     assert all(1.0 <= after - before < 1.0 + 16 * PERIOD_S for before, after in zip(times, times[1:], strict=False))
 
 
-def test_two_runs_give_the_same_bytes_and_replace_what_stood_there(
-    tmp_path: Path, table: list[tuple[float, float, float]]
+def test_another_layout_gives_the_same_bytes_and_replaces_what_stood_there(
+    tmp_path: Path, done: Done, table: list[tuple[float, float, float]]
 ) -> None:
-    recorded = write(tmp_path / "drive.csv", table)
+    recorded = write(tmp_path / "drive.csv", table, header="Zeit,volts,drive.speed")
+    recorded.write_text(recorded.read_text().replace(",", ";").replace(".", ",").replace("drive,speed", "drive.speed"))
+    out = tmp_path / "out"
+    out.mkdir()
     names = ("belt.snapshot.json", "belt.trend.csv", "events.jsonl")
-    assert replay(tmp_path, recorded) == 0
-    first = [(tmp_path / "out" / name).read_bytes() for name in names]
-    assert replay(tmp_path, recorded) == 0
-    assert [(tmp_path / "out" / name).read_bytes() for name in names] == first
+    for name in names:
+        (out / name).write_text("what an earlier run left\n")
+    assert replay(tmp_path, recorded, "--separator", ";", "--decimal", ",", "--time-column", "Zeit") == 0
+    assert [(out / name).read_bytes() for name in names] == [(done.out / name).read_bytes() for name in names]
 
 
 def test_bad_rows_are_said_once_per_kind_and_the_good_ones_used(
@@ -107,18 +125,6 @@ def test_bad_rows_are_said_once_per_kind_and_the_good_ones_used(
     assert len(said.err.splitlines()) == len(summary["rejected"])
     assert "101" in said.err
     assert summary["loops"]["belt"]["state"] == "watching"
-
-
-def test_other_layouts_are_declared(tmp_path: Path, table: list[tuple[float, float, float]]) -> None:
-    plain, other = tmp_path / "plain", tmp_path / "other"
-    plain.mkdir()
-    other.mkdir()
-    assert replay(plain, write(plain / "drive.csv", table)) == 0
-    recorded = write(other / "drive.csv", table, header="Zeit,volts,drive.speed")
-    recorded.write_text(recorded.read_text().replace(",", ";").replace(".", ",").replace("drive,speed", "drive.speed"))
-    assert replay(other, recorded, "--separator", ";", "--decimal", ",", "--time-column", "Zeit") == 0
-    snapshots = [read(folder / "out" / "belt.snapshot.json") for folder in (plain, other)]
-    assert snapshots[0]["quantities"] == snapshots[1]["quantities"]
 
 
 @pytest.mark.parametrize(
