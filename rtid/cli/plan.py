@@ -9,7 +9,7 @@ from rtid.intake.serial_port import reset_warning
 from rtid.service.intakes import origin
 from rtid.settings import Loop, Node, Place, Source
 
-PROGRAM_MB = 40.0  # interpreter, numpy and the clients, resident (tools/footprint.py)
+PROGRAM_MB = 45.0  # interpreter, numpy and the clients, resident (tools/footprint.py)
 BASELINE_ROWS = 20_000  # rows kept for the baseline, at the most
 COPIES = 4  # of those rows while the baseline is fitted: signals, sensitivities, residuals
 SHORT_MEMORY = 50  # periods below which the estimate of now rests on next to nothing
