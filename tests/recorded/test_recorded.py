@@ -27,7 +27,9 @@ def test_a_replay_shows_what_is_expected(name: str, tmp_path: Path) -> None:
     events = [json.loads(line) for line in (tmp_path / "events.jsonl").read_text().splitlines()]
     assert snapshot["state"] == expected["state"]
     for quantity, (low, high) in expected["quantities"].items():
-        assert low <= snapshot["quantities"][quantity]["value"] <= high, quantity
+        value = snapshot["quantities"][quantity]["value"]
+        assert value is not None, quantity
+        assert low <= value <= high, (quantity, value)
     judge_events(events, expected)
 
 
