@@ -188,7 +188,7 @@ class Loop:
             stamp=now.stamp,
         )
         if self._watch is not None:
-            self._watch.step(
+            self._estimator = self._watch.step(
                 inputs, output, ok, estimator=self._estimator, book=self._book, when=(now.time_s, now.stamp)
             )
 

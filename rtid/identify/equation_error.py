@@ -20,7 +20,6 @@ Array = NDArray[np.float64]
 Mask = NDArray[np.bool_]
 
 MIN_ROWS = 200
-_FIRST_GUESS_ROWS = 20.0
 START_ERROR = 0.2  # standard error of ln|gain| at which an estimate is worth publishing
 
 
@@ -199,11 +198,6 @@ class BankEstimator:
 
     def restart(self, inputs: Array) -> None:
         self._regressors.break_off()
-
-    def loosen(self) -> None:
-        keep = min(1.0, _FIRST_GUESS_ROWS / max(1.0, self._stack.weight))
-        self._stack.discount(keep)
-        self._squares = keep * self._squares
 
     def _learn(self, rows: Array, output: Array, best: int) -> None:
         m = len(output)

@@ -65,11 +65,6 @@ class FollowingEstimator:
         self._predictor.restart(inputs)
         self._whitener.break_off()
 
-    def loosen(self) -> None:
-        self._covariance = self._covariance + np.diag(self._prior[self._free] ** 2)
-        information = np.asarray(np.linalg.inv(self._covariance), dtype=np.float64)
-        self._forgetting = SubspaceForgetting(information, np.zeros_like(information), self._prior[self._free])
-
     def informed(self) -> Mask:
         known = np.zeros(len(self._fit.theta), dtype=np.bool_)
         known[self._free] = self._forgetting.informed()

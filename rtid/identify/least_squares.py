@@ -31,11 +31,6 @@ class LeastSquaresStack:
         self.triangle = np.asarray(np.linalg.qr(stacked, mode="r"))
         self.weight = factor * self.weight + regressors.shape[1]
 
-    def discount(self, factor: float) -> None:
-        """Weaken what is known by `factor`; the estimates stay."""
-        self.triangle = np.sqrt(factor) * self.triangle
-        self.weight *= factor
-
     def solve(self) -> Array:
         """θ of every candidate, (c, p)."""
         corner, right = self.triangle[:, : self.p, : self.p], self.triangle[:, : self.p, self.p :]

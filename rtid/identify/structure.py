@@ -66,10 +66,6 @@ class Estimator(Protocol):
 
     def restart(self, inputs: Array) -> None: ...
 
-    def loosen(self) -> None:
-        """The plant has changed: keep the values, but trust them no more than a first guess."""
-        ...
-
 
 class Structure(Protocol):
     """One kind of model with its order and dead time range. `memory` is counted in rows."""

@@ -17,7 +17,8 @@ def autocovariance(residual: Array, ok: Mask, lags: int = MAX_ORDER) -> Array:
     """Σε(t)ε(t-l) over pairs of good rows, l = 0 … lags, over the number of good rows; shape (lags+1,)."""
     clean = np.where(ok, residual, 0.0)
     count = max(1, int(ok.sum()))
-    return np.array([clean[lag:] @ clean[: len(clean) - lag] for lag in range(lags + 1)]) / count
+    pairs = [clean[lag:] @ clean[: max(0, len(clean) - lag)] for lag in range(lags + 1)]
+    return np.array(pairs) / count
 
 
 def autoregression(covariance: Array, rows: float) -> Array:

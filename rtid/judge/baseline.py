@@ -82,12 +82,19 @@ def _uninformed(structure: Structure, fit: Fit) -> Refusal | None:
     needed = MIN_TIME_CONSTANTS * structure.slowest(fit) / structure.period
     if fit.rows < needed:
         return Refusal(f"learning: {fit.rows} rows are less than 20 time constants ({needed:.0f} rows)")
+    unknown = ill_known(structure, fit)
+    return Refusal(f"learning: {unknown} is not known well enough yet; the input must move more") if unknown else None
+
+
+def ill_known(structure: Structure, fit: Fit) -> str | None:
+    """The first of gain and main dynamics that the fit does not know to INFORMED; None when it knows them."""
     values, jacobian = quantity_jacobian(structure, fit)
-    errors = np.sqrt(np.diag(jacobian @ fit.covariance @ jacobian.T))
+    with np.errstate(invalid="ignore"):
+        errors = np.sqrt(np.diag(jacobian @ fit.covariance @ jacobian.T))
     for (name, value), error in zip(values.items(), errors, strict=True):
         asked = name == "gain" or (name in ("time_constant_1", "natural_frequency") and np.isfinite(value))
         if asked and not error < INFORMED:
-            return Refusal(f"learning: {name} is known to ±{100 * error:.0f} % only; the input must move more")
+            return name
     return None
 
 

@@ -12,6 +12,7 @@ from rtid.judge import wording
 from rtid.judge.alarms import AlarmBook, Finding
 from rtid.judge.baseline import PROMISED_ROWS, Baseline, Follower
 from rtid.judge.change import Judged, QuantityChange, leader, surest
+from rtid.judge.relearning import Relearning
 from rtid.judge.score import DriftScore
 from rtid.report import Drift
 from rtid.settings import Loop as LoopSettings
@@ -19,8 +20,6 @@ from rtid.settings import Loop as LoopSettings
 Array = NDArray[np.float64]
 Mask = NDArray[np.bool_]
 
-_MOVING = 4.0  # standard errors between two looks at an estimate that has not come to rest
-_TRANSIENT = 0.6  # of dead time and five time constants: what the change itself stirs up has died down
 _POWER_95 = 7.2  # deviations between the threshold at 1e5 rows and a change seen with 95 % power
 
 
@@ -34,9 +33,9 @@ class Watch:
         self.baseline = baseline
         self.identity = f"{settings.name}-1"
         self._settings = settings
+        self._structure = structure
         self._follower = follower
         self._judged = Judged(structure, baseline, tolerances)
-        self._patience = max(settings.block_rows, math.ceil(_TRANSIENT * structure.settling_rows(baseline.fit)))
         self._rows = 0
         self._score = DriftScore(
             baseline.covariance,
@@ -47,9 +46,8 @@ class Watch:
         )
         self._named: str | None = None  # the quantity that `plant_drift` names while it stands
         self._hint = "undecided"  # what `plant_shift` names
-        self._flagged_rows = 0
-        self._looks = 0  # at the estimate since the flag, one each `patience` rows
-        self._seen: Array | None = None  # the estimate at the last look
+        self._relearning: Relearning | None = None  # while a change is flagged
+        self._broken = False
 
     @property
     def provisional(self) -> bool:
@@ -61,24 +59,24 @@ class Watch:
 
     def restart(self, inputs: Array) -> None:
         self._follower.restart(inputs)
+        self._broken = True
 
     def step(
         self, inputs: Array, output: Array, ok: Mask, *,
         estimator: Estimator, book: AlarmBook, when: tuple[float, float],
-    ) -> None:  # fmt: skip
-        """Judge the next m rows. `estimator` has learnt from them; `when`: data time and stamp of the block's end."""
+    ) -> Estimator:  # fmt: skip
+        """Judge the next m rows; `estimator`, which has learnt from them, or a fresh one since a flagged change.
+
+        `when`: data time and stamp of the block's end.
+        """
         e, phi = self._follower.run(inputs, output, ok)
-        flagged = self._score.ratio >= 1.0
-        self._score.step(e, phi, frozen=flagged or self._judged.half_used(self._score.learnt))
+        frozen = self._relearning is not None or self._judged.half_used(self._score.learnt)
+        self._score.step(e, phi, frozen=frozen)
         self._rows += len(e)
-        self._flagged_rows = self._flagged_rows + len(e) if self._score.ratio >= 1.0 else 0
-        if self._flagged_rows or self._named:
-            self._relearn(estimator)
-            self._decide(self._judged.assess(estimator.fit), book, when)
-        else:
-            self._hint, self._looks, self._seen = "undecided", 0, None
-            book.note("plant_shift", Finding(False), time_s=when[0], stamp=when[1])
+        estimator = self._relearn(estimator, inputs, output, ok)
+        self._decide(self._judged.assess(estimator.fit) if self._relearning else [], book, when)
         self._note_blindness(book, when)
+        return estimator
 
     def drift(self, estimator: Estimator, last_informative: float | None) -> Drift:
         changes = self._judged.assess(estimator.fit)
@@ -115,28 +113,22 @@ class Watch:
         variance = float(g @ np.linalg.solve(unit, g)) / horizon + float(gradient @ known @ gradient)
         return 100.0 * _POWER_95 * math.sqrt(variance) if math.isfinite(variance) else None
 
-    def _relearn(self, estimator: Estimator) -> None:
-        """Let the estimator learn anew at the flag, when the transient has died down, and while it still moves."""
-        if self._flagged_rows < self._looks * self._patience:
-            return
-        if self._looks < 2 or self._moves(estimator):
-            estimator.loosen()
-            self._seen = None
-        else:
-            self._seen = estimator.fit.theta
-        self._looks = self._flagged_rows // self._patience + 1
-
-    def _moves(self, estimator: Estimator) -> bool:
-        if self._seen is None:
-            return False
-        error = np.sqrt(np.maximum(np.diag(estimator.fit.covariance)[:-1], 1e-300))
-        moved = np.abs(estimator.fit.theta - self._seen)[:-1]
-        return bool(np.any((moved > _MOVING * error) & (moved > 0.0)))
+    def _relearn(self, estimator: Estimator, inputs: Array, output: Array, ok: Mask) -> Estimator:
+        over = self._score.ratio >= 1.0
+        if self._relearning is None and over:
+            memory = self._settings.memory_s / self._settings.period_s
+            self._relearning = Relearning(self._structure, self.baseline.fit, memory=memory)
+        elif self._relearning is not None and not over and self._named is None:
+            self._relearning, self._hint = None, "undecided"
+        if self._relearning is not None:
+            estimator = self._relearning.step(estimator, inputs, output, ok, new_stretch=self._broken)
+        self._broken = False
+        return estimator
 
     def _decide(self, changes: list[QuantityChange], book: AlarmBook, when: tuple[float, float]) -> None:
         time_s, stamp = when
         by_name = {q.name: q for q in changes}
-        beyond = [q for q in changes if q.beyond] if self._looks > 2 else []
+        beyond = [q for q in changes if q.beyond] if self._relearning and self._relearning.found else []
         named = by_name.get(self._named) if self._named else None
         if beyond and (named is None or named.within):
             self._named = surest(beyond).name
@@ -144,7 +136,7 @@ class Watch:
             self._named = None
         drift = self._finding(by_name[self._named]) if self._named in by_name else Finding(False)
         book.note("plant_drift", drift, time_s=time_s, stamp=stamp)
-        shift = self._flagged_rows > 0 and self._named is None
+        shift = self._relearning is not None and self._named is None
         book.note("plant_shift", self._shift_finding(changes) if shift else Finding(False), time_s=time_s, stamp=stamp)
 
     def _finding(self, change: QuantityChange) -> Finding:
@@ -152,7 +144,7 @@ class Watch:
         return Finding(True, text, change.name, change.change_pct, change.low_pct, change.high_pct)
 
     def _shift_finding(self, changes: list[QuantityChange]) -> Finding:
-        found = leader(changes) if self._looks > 2 else None
+        found = leader(changes) if self._relearning and self._relearning.found else None
         if found is not None and self._hint == "undecided":
             self._hint = found.name
         change = next((q for q in changes if q.name == self._hint), None)

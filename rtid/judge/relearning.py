@@ -1,0 +1,58 @@
+"""After a flagged change: fit the rows since then anew, so that the estimate does not creep from old plant to new."""
+
+from __future__ import annotations
+
+import math
+
+import numpy as np
+from numpy.typing import NDArray
+
+from rtid.identify.record import RecordKeeper
+from rtid.identify.structure import Estimator, Fit, Structure
+from rtid.judge.baseline import ill_known
+
+Array = NDArray[np.float64]
+Mask = NDArray[np.bool_]
+
+_GROWTH = 1.5  # rows between two fits
+_TRANSIENT = 0.6  # of dead time and five time constants: what the change itself stirs up has died down
+_MOST_ROWS = 20_000
+
+
+class Relearning:
+    """Collects the rows since a flag and hands out a fresh estimator whenever they carry a better fit.
+
+    Rows older than the estimator's `memory` (rows) are left out, so a plant that goes on changing is followed.
+    """
+
+    def __init__(self, structure: Structure, before: Fit, *, memory: float) -> None:
+        self._structure = structure
+        self._before = before
+        self._memory = memory
+        settling = structure.settling_rows(before)
+        self._wait = math.ceil(_TRANSIENT * settling)
+        limit = min(_MOST_ROWS, max(math.ceil(memory), 2 * settling))
+        self._keeper = RecordKeeper(limit)
+        self._last_fit = float(limit)
+        self._rows = 0
+        self._next = 2.0 * self._wait
+        self.found = False
+
+    def step(self, estimator: Estimator, inputs: Array, output: Array, ok: Mask, *, new_stretch: bool) -> Estimator:
+        """Take in the next m rows; `estimator`, or a fresh one that knows the plant since the flag."""
+        self._rows += len(output)
+        if self._rows > self._wait:
+            self._keeper.append(inputs, output, ok, new_stretch=new_stretch)
+        if self._rows < self._next or self._rows - self._wait > _GROWTH * self._last_fit:
+            return estimator
+        self._next = _GROWTH * self._rows
+        return self._fit(estimator)
+
+    def _fit(self, estimator: Estimator) -> Estimator:
+        record = self._keeper.record()
+        fits = [self._structure.refit(record, start) for start in (self._before, estimator.fit)]
+        fit = min(fits, key=lambda f: f.sigma)
+        if ill_known(self._structure, fit) is not None:
+            return estimator
+        self.found = True
+        return self._structure.estimator(fit, record, memory=self._memory)
