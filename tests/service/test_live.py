@@ -33,7 +33,7 @@ def test_the_gain_of_a_known_plant_is_published_within_three_percent(tmp_path: P
     with PtyDevice(tmp_path / "board") as board, Listener(mqtt5_broker.port, "rtid/#") as listener:
         path = configure(tmp_path, board.port, broker=mqtt5_broker.port)
         with RunningRtid("run", path) as service:
-            listener.wait_for(shows(STATUS, lambda status: status["state"] == "online"))
+            listener.wait_for(shows(STATUS, lambda status: status["state"] == "online"), 20.0)
             service.wait_for_line("is open")
             board.stream(plant_rows(6000))
             model = json.loads(listener.wait_for(samples_above(5000), 30.0).payload)
@@ -73,7 +73,7 @@ def test_it_goes_on_after_garbage_a_pulled_port_and_a_restarted_broker(tmp_path:
 def test_a_killed_service_leaves_its_will(tmp_path: Path, mqtt5_broker: Broker) -> None:
     path = configure(tmp_path, broker=mqtt5_broker.port)
     with Listener(mqtt5_broker.port, "rtid/#") as listener, RunningRtid("run", path) as service:
-        listener.wait_for(shows(STATUS, lambda status: status["state"] == "online"))
+        listener.wait_for(shows(STATUS, lambda status: status["state"] == "online"), 20.0)
         service.end(signal.SIGKILL)
         listener.wait_for(shows(STATUS, lambda status: status == OFFLINE))
 

@@ -62,6 +62,8 @@ class RunningRtid:
             reader.join()
         with self._process:  # closes its pipes and waits for it
             pass
+        if error is not None:
+            error.add_note(f"exit code {self._process.returncode}, stderr:\n{''.join(self.stderr)}")
 
     @property
     def pid(self) -> int:
