@@ -76,8 +76,8 @@ class EquationError:
         told = [np.isfinite(fit.covariance).all(), fit.rows >= MIN_ROWS // 2]
         return fit if all(told) and _log_gain_error(fit, self.order) < START_ERROR else None
 
-    def refit(self, record: Record, fit: Fit, *, thorough: bool = False) -> Fit:
-        """Least squares has one minimum: nothing more thorough is needed."""
+    def refit(self, record: Record, fit: Fit, *, thorough: bool = False, moving: bool = False) -> Fit:
+        """Least squares has one minimum, and the measured output carries the level: both choices change nothing."""
         return fit_of(self._stack(record)[0], self.delays, record.inputs.mean(axis=0))
 
     def run(self, record: Record, fit: Fit) -> tuple[Array, Array, Mask, EquationPredictor]:

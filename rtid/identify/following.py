@@ -16,7 +16,14 @@ from rtid.identify.gauss_newton import HUBER, SIGMA_FLOOR
 from rtid.identify.record import Record
 from rtid.identify.simulated import Plant, run_record
 from rtid.identify.structure import Fit
-from rtid.identify.whitening import Whitener, autocovariance, autoregression
+from rtid.identify.whitening import (
+    LONG_RUN_LAGS,
+    RunningAutocovariance,
+    Whitener,
+    autocovariance,
+    autoregression,
+    long_run_ratio,
+)
 
 Array = NDArray[np.float64]
 Mask = NDArray[np.bool_]
@@ -33,9 +40,6 @@ class FollowingEstimator:
         self._fit = fit
         self._memory = memory
         residual, psi, ok, self._predictor = run_record(plant, record, fit)
-        self._whitener = Whitener(len(fit.theta))
-        self._whitener.coefficients = fit.ar
-        self._whitener.run(residual[-16:], psi[-16:], ok[-16:])
         finite = record.output[np.isfinite(record.output)]
         self._spread = float(np.std(finite))
         self._free = np.flatnonzero(plant.free)
@@ -43,9 +47,10 @@ class FollowingEstimator:
         self._prior[-1] = max(self._spread, 1e-9)
         self._covariance = fit.covariance[np.ix_(self._free, self._free)]
         self._forgetting = self._start_information()
-        self._noise = autocovariance(residual, ok)
+        e, _, good = self._start_whitening(residual, psi, ok)
+        self._noise = RunningAutocovariance(autocovariance(residual, ok))
+        self._leftover = RunningAutocovariance(autocovariance(e, good, LONG_RUN_LAGS))
         self._weight = float(min(memory, max(1, ok.sum())))
-        self._variance = fit.sigma**2
         self._blocks = 0
         self.invalid = False
 
@@ -58,17 +63,25 @@ class FollowingEstimator:
         residual, psi, ok = self._predictor.run(inputs, output, ok)
         e, phi, good = self._whitener.run(residual, psi, ok)
         self._learn(e[good], phi[good][:, self._free], psi[-2:])
-        self._learn_noise(residual, ok, e[good])
+        if good.any():
+            self._learn_noise(np.where(ok, residual, 0.0), np.where(good, e, 0.0), float(good.sum()))
         return e, residual, good
 
     def restart(self, inputs: Array) -> None:
         self._predictor.restart(inputs)
         self._whitener.break_off()
+        self._noise.break_off()
+        self._leftover.break_off()
 
     def informed(self) -> Mask:
         known = np.zeros(len(self._fit.theta), dtype=np.bool_)
         known[self._free] = self._forgetting.informed()
         return known
+
+    def _start_whitening(self, residual: Array, psi: Array, ok: Mask) -> tuple[Array, Array, Mask]:
+        self._whitener = Whitener(psi.shape[1])
+        self._whitener.coefficients = self._fit.ar
+        return self._whitener.run(residual, psi, ok)
 
     def _start_information(self) -> SubspaceForgetting:
         information = np.asarray(np.linalg.inv(self._covariance + 1e-18 * np.eye(len(self._free))), dtype=np.float64)
@@ -86,7 +99,8 @@ class FollowingEstimator:
         gain = np.linalg.inv(self._forgetting.information)
         step = self._limited(gain @ (scaled.T @ unit))
         keep = np.eye(len(step)) - gain @ gained
-        covariance = keep @ self._covariance @ keep.T + gain @ gained @ gain
+        understated = long_run_ratio(self._leftover.covariance)
+        covariance = keep @ self._covariance @ keep.T + understated * (gain @ gained @ gain)
         if not (np.isfinite(step).all() and np.isfinite(covariance).all()):
             self.invalid = True
             return
@@ -120,23 +134,20 @@ class FollowingEstimator:
         covariance[np.ix_(self._free, self._free)] = self._covariance
         self._fit = replace(self._fit, theta=theta, covariance=covariance, rows=self._fit.rows + 1)
 
-    def _learn_noise(self, residual: Array, ok: Mask, e: Array) -> None:
-        if len(e) == 0:
-            return
-        keep = float(np.exp(-len(e) / self._memory))
-        bound = 4.0 * np.sqrt(self._noise[0]) + self._floor
-        fresh = autocovariance(np.clip(residual, -bound, bound), ok)
-        self._noise = keep * self._noise + (1.0 - keep) * fresh
-        self._weight = min(self._memory, self._weight + len(e))
+    def _learn_noise(self, residual: Array, e: Array, rows: float) -> None:
+        keep = float(np.exp(-rows / self._memory))
+        bound = 4.0 * float(np.sqrt(self._noise.covariance[0])) + self._floor
+        self._noise.add(np.clip(residual, -bound, bound), keep=keep, rows=rows)
         clipped = np.clip(e, -HUBER * self._fit.sigma, HUBER * self._fit.sigma)
-        self._variance = keep * self._variance + (1.0 - keep) * float(np.mean(clipped**2))
+        self._leftover.add(clipped, keep=keep, rows=rows)
+        self._weight = min(self._memory, self._weight + rows)
         self._blocks += 1
         if self._blocks % _RENEW_EVERY == 0:
-            self._whitener.coefficients = autoregression(self._noise, self._weight)
+            self._whitener.coefficients = autoregression(self._noise.covariance, self._weight)
         self._fit = replace(
             self._fit,
-            sigma=max(float(np.sqrt(self._variance)), self._floor),
-            noise=float(np.sqrt(self._noise[0])),
+            sigma=max(float(np.sqrt(self._leftover.covariance[0])), self._floor),
+            noise=float(np.sqrt(self._noise.covariance[0])),
             ar=self._whitener.coefficients,
             noise_rows=self._weight,
         )

@@ -15,7 +15,7 @@ from rtid.identify.record import Record
 from rtid.identify.recursion import all_pole
 from rtid.identify.simulated import Plant, run_record
 from rtid.identify.structure import Fit
-from rtid.identify.whitening import Whitener, autocovariance, autoregression
+from rtid.identify.whitening import LONG_RUN_LAGS, Whitener, autocovariance, autoregression, long_run_ratio
 
 Array = NDArray[np.float64]
 Mask = NDArray[np.bool_]
@@ -40,18 +40,24 @@ class Point:
 
 
 class RecordFit:
-    """Fits one record; holds what does not change between the iterations."""
+    """Fits one record; holds what does not change between the iterations.
 
-    def __init__(self, plant: Plant, record: Record) -> None:
+    `moving`: the plant may still be on its way, so the level may follow a parabola through the record.
+    """
+
+    def __init__(self, plant: Plant, record: Record, *, moving: bool = False) -> None:
         self.plant = plant
         self.record = record
+        time = np.linspace(-1.0, 1.0, len(record))
+        self._trend = np.column_stack((time, time**2 - 1.0 / 3.0)) if moving else np.empty((len(record), 0))
+        self._nuisances = plant.order + self._trend.shape[1]
         finite = record.output[np.isfinite(record.output)]
         self.spread = float(np.std(finite)) if len(finite) else 0.0
 
     def point(self, fit: Fit, states: Array) -> Point:
-        """Evaluate at `fit` with the model's initial states (two numbers; the second is 0 at order 1)."""
+        """Evaluate at `fit` with the nuisance parameters: the model's initial states, then the trend."""
         residual, psi, ok, predictor = run_record(self.plant, self.record, fit)
-        free = self._free_response(predictor.simulator.model.f)
+        free = np.hstack((self._free_response(predictor.simulator.model.f), self._trend))
         residual = residual - free @ states
         whitener = Whitener(psi.shape[1] + free.shape[1])
         whitener.coefficients = fit.ar
@@ -60,7 +66,7 @@ class RecordFit:
 
     def polish(self, fit: Fit, *, rounds: int = 6, steps: int = 12) -> Point:
         """Converge from `fit`. `rounds` renew the noise model, each with at most `steps` iterations."""
-        now = self.point(fit, np.zeros(self.plant.order))
+        now = self.point(fit, np.zeros(self._nuisances))
         for _ in range(rounds):
             now = self._renew_noise(now)
             before = now.fit.theta
@@ -72,7 +78,7 @@ class RecordFit:
         return replace(now, fit=replace(now.fit, covariance=self.covariance(now), rows=int(now.ok.sum())))
 
     def covariance(self, point: Point) -> Array:
-        """Of θ, initial states eliminated; zero rows for what is known."""
+        """Of θ, nuisance parameters eliminated, what is left of the noise's colour counted; 0 for what is known."""
         columns = self._columns()
         phi = point.phi[point.ok][:, columns]
         scale = np.sqrt(np.maximum((phi**2).sum(axis=0), 1e-300))
@@ -80,12 +86,14 @@ class RecordFit:
         normal[np.diag_indices_from(normal)] += SINGULAR
         inverse = np.linalg.inv(normal)
         full = np.zeros((len(columns), len(columns)))
-        full[np.ix_(columns, columns)] = inverse / np.outer(scale, scale) * point.fit.sigma**2
+        clipped = np.clip(point.e, -HUBER * point.fit.sigma, HUBER * point.fit.sigma)
+        understated = long_run_ratio(autocovariance(clipped, point.ok, LONG_RUN_LAGS))
+        full[np.ix_(columns, columns)] = inverse / np.outer(scale, scale) * point.fit.sigma**2 * understated
         p = len(self.plant.names)
         return full[:p, :p]
 
     def _columns(self) -> Mask:
-        return np.concatenate((self.plant.free, np.ones(self.plant.order, dtype=np.bool_)))
+        return np.concatenate((self.plant.free, np.ones(self._nuisances, dtype=np.bool_)))
 
     def _free_response(self, f: Array) -> Array:
         """What the model output shows of its own past before the record, one column per initial state, (N, order)."""

@@ -46,8 +46,8 @@ class OutputError:
         long_enough = fit.rows * self.period >= MIN_TIME_CONSTANTS * self.slowest(fit)
         return fit if bool((errors < START_ERROR).all()) and long_enough else None
 
-    def refit(self, record: Record, fit: Fit, *, thorough: bool = False) -> Fit:
-        whole = RecordFit(self._plant, record)
+    def refit(self, record: Record, fit: Fit, *, thorough: bool = False, moving: bool = False) -> Fit:
+        whole = RecordFit(self._plant, record, moving=moving)
         points = [whole.polish(fit)]
         if thorough:
             found = self._from_grid(record)

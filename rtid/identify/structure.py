@@ -77,8 +77,8 @@ class Structure(Protocol):
         """From nothing; None while the record does not carry one."""
         ...
 
-    def refit(self, record: Record, fit: Fit, *, thorough: bool = False) -> Fit:
-        """From a known fit; `thorough` also tries the other minima."""
+    def refit(self, record: Record, fit: Fit, *, thorough: bool = False, moving: bool = False) -> Fit:
+        """From a known fit; `thorough` also tries the other minima, `moving` lets the level follow a slow change."""
         ...
 
     def run(self, record: Record, fit: Fit) -> tuple[Array, Array, Mask, Predictor]:

@@ -11,6 +11,7 @@ Array = NDArray[np.float64]
 Mask = NDArray[np.bool_]
 
 MAX_ORDER = 4
+LONG_RUN_LAGS = 24
 
 
 def autocovariance(residual: Array, ok: Mask, lags: int = MAX_ORDER) -> Array:
@@ -39,6 +40,39 @@ def autoregression(covariance: Array, rows: float) -> Array:
         if score < best:
             best, coefficients = score, a
     return coefficients
+
+
+def long_run_ratio(covariance: Array) -> float:
+    """Long-run variance over variance of a series that should be white: what its errors understate, 1 at the least.
+
+    Bartlett's window over the lags given (Newey & West, Econometrica 55, 1987).
+    """
+    lags = len(covariance) - 1
+    if covariance[0] <= 0.0:
+        return 1.0
+    weights = 1.0 - np.arange(1, lags + 1) / (lags + 1.0)
+    return max(1.0, float(1.0 + 2.0 * (weights @ covariance[1:]) / covariance[0]))
+
+
+class RunningAutocovariance:
+    """Exponentially weighted autocovariances, lags 0 … n, of a series that comes in pieces of any length."""
+
+    def __init__(self, covariance: Array) -> None:
+        self.covariance = covariance
+        self._tail = np.zeros(len(covariance) - 1)
+
+    def break_off(self) -> None:
+        """What comes next does not follow on what came before."""
+        self._tail[:] = 0.0
+
+    def add(self, values: Array, *, keep: float, rows: float) -> None:
+        """`keep` weakens what is known; values: (m,), zero where a row does not count; `rows`: how many count."""
+        tail = len(self._tail)
+        series = np.concatenate((self._tail, values))
+        m = len(values)
+        fresh = np.array([values @ series[tail - lag : tail - lag + m] for lag in range(tail + 1)]) / rows
+        self.covariance = keep * self.covariance + (1.0 - keep) * fresh
+        self._tail = series[len(series) - tail :]
 
 
 def _bic(variance: float, rows: float, order: int) -> float:

@@ -91,11 +91,9 @@ def ill_known(structure: Structure, fit: Fit) -> str | None:
     values, jacobian = quantity_jacobian(structure, fit)
     with np.errstate(invalid="ignore"):
         errors = np.sqrt(np.diag(jacobian @ fit.covariance @ jacobian.T))
-    for (name, value), error in zip(values.items(), errors, strict=True):
-        asked = name == "gain" or (name in ("time_constant_1", "natural_frequency") and np.isfinite(value))
-        if asked and not error < INFORMED:
-            return name
-    return None
+    dynamics = "time_constant_1" if np.isfinite(values["time_constant_1"]) else "natural_frequency"
+    known = {name for name, error in zip(values, errors, strict=True) if error < INFORMED}
+    return next((name for name in ("gain", dynamics) if name not in known), None)
 
 
 def _unsteady(structure: Structure, record: Record, fit: Fit, tolerances: dict[str, float]) -> Refusal | None:

@@ -42,10 +42,10 @@ class QuantityChange:
         return self.high_pct < self.tolerance_pct and self.low_pct > -self.tolerance_pct
 
     @property
-    def excess(self) -> float:
-        """Change over tolerance, as far as it is sure."""
-        sure = max(self.low_pct, -self.high_pct, 0.0)
-        return sure / self.tolerance_pct
+    def margin(self) -> float:
+        """Standard errors by which the change is beyond the tolerance; negative while it is inside."""
+        error = max((self.high_pct - self.low_pct) / (2.0 * SURE), 1e-9)
+        return (abs(self.change_pct) - self.tolerance_pct) / error
 
 
 class Judged:
@@ -114,9 +114,9 @@ class Judged:
 
 
 def surest(changes: list[QuantityChange]) -> QuantityChange:
-    """The one surest beyond its tolerance; while none is, the one nearest to it."""
+    """The one surest beyond its tolerance; while none is, the one whose change is surest."""
     beyond = [q for q in changes if q.beyond]
-    return max(beyond or changes, key=lambda q: (q.excess, q.surety))
+    return max(beyond, key=lambda q: q.margin) if beyond else max(changes, key=lambda q: q.surety)
 
 
 def leader(changes: list[QuantityChange]) -> QuantityChange | None:

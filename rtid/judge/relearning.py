@@ -33,7 +33,6 @@ class Relearning:
         self._wait = math.ceil(_TRANSIENT * settling)
         limit = min(_MOST_ROWS, max(math.ceil(memory), 2 * settling))
         self._keeper = RecordKeeper(limit)
-        self._last_fit = float(limit)
         self._rows = 0
         self._next = 2.0 * self._wait
         self.found = False
@@ -43,14 +42,14 @@ class Relearning:
         self._rows += len(output)
         if self._rows > self._wait:
             self._keeper.append(inputs, output, ok, new_stretch=new_stretch)
-        if self._rows < self._next or self._rows - self._wait > _GROWTH * self._last_fit:
+        if self._rows < self._next:
             return estimator
         self._next = _GROWTH * self._rows
         return self._fit(estimator)
 
     def _fit(self, estimator: Estimator) -> Estimator:
         record = self._keeper.record()
-        fits = [self._structure.refit(record, start) for start in (self._before, estimator.fit)]
+        fits = [self._structure.refit(record, start, moving=True) for start in (self._before, estimator.fit)]
         fit = min(fits, key=lambda f: f.sigma)
         if ill_known(self._structure, fit) is not None:
             return estimator

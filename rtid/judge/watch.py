@@ -48,6 +48,9 @@ class Watch:
         self._hint = "undecided"  # what `plant_shift` names
         self._relearning: Relearning | None = None  # while a change is flagged
         self._broken = False
+        self._blind_rows = 0  # rows for which the data could not have shown a change of the tolerance
+        self._told = Finding(False)  # what `plant_drift` says
+        self._within_rows = 0  # rows for which the named quantity has been back within its tolerance
 
     @property
     def provisional(self) -> bool:
@@ -130,12 +133,17 @@ class Watch:
         by_name = {q.name: q for q in changes}
         beyond = [q for q in changes if q.beyond] if self._relearning and self._relearning.found else []
         named = by_name.get(self._named) if self._named else None
-        if beyond and (named is None or named.within):
+        self._within_rows = self._within_rows + self._settings.block_rows if named is not None and named.within else 0
+        if beyond and (named is None or not named.beyond):
             self._named = surest(beyond).name
-        elif named is not None and named.within:
+        elif self._within_rows * self._settings.period_s > self._settings.memory_s:
             self._named = None
-        drift = self._finding(by_name[self._named]) if self._named in by_name else Finding(False)
-        book.note("plant_drift", drift, time_s=time_s, stamp=stamp)
+        told = by_name.get(self._named) if self._named else None
+        if told is None:
+            self._told = Finding(False)
+        elif told.beyond:
+            self._told = self._finding(told)
+        book.note("plant_drift", self._told, time_s=time_s, stamp=stamp)
         shift = self._relearning is not None and self._named is None
         book.note("plant_shift", self._shift_finding(changes) if shift else Finding(False), time_s=time_s, stamp=stamp)
 
@@ -156,8 +164,9 @@ class Watch:
     def _note_blindness(self, book: AlarmBook, when: tuple[float, float]) -> None:
         seen = self.detectable_gain_pct()
         tolerance = self._settings.tolerance.gain_pct
-        enough_rows = self._rows * self._settings.period_s > self._settings.memory_s
-        blind = enough_rows and (seen is None or seen > tolerance)
+        seeing = seen is not None and seen <= tolerance
+        self._blind_rows = 0 if seeing else self._blind_rows + self._settings.block_rows
+        blind = self._blind_rows * self._settings.period_s > self._settings.memory_s
         finding = Finding(blind, wording.blind_text(seen, tolerance))
         book.note("cannot_judge", finding, time_s=when[0], stamp=when[1])
 
