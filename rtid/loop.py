@@ -23,7 +23,7 @@ from rtid.judge.watch import Watch
 from rtid.model import snapshot as snapshots
 from rtid.model.quantities import quantities, units_of, unknown
 from rtid.model.validation import RecentRows
-from rtid.report import Drift, Health, Quantity, Report, State
+from rtid.report import Drift, Health, Quantity, Report, State, Transition
 from rtid.rows import Rows
 from rtid.settings import Loop as LoopSettings
 from rtid.settings import Tolerance
@@ -71,6 +71,7 @@ class Loop:
         self._broken = True  # the next rows do not follow on the last ones that were used
         self._output_shift = 0.0
         self._last_report_s = -math.inf
+        self._actions: list[Transition] = []  # events that are no alarms, not yet reported
         self._last_informative: float | None = None
         self._health: tuple[Health, str] = ("function_check", "waiting: no reading yet")
         self._health_since: float | None = None
@@ -197,6 +198,12 @@ class Loop:
         self._estimator = learner.estimator
         if found is not None:
             self._accept(*found)
+            self._actions.append(self._baseline_event(now))
+
+    def _baseline_event(self, now: _Moment) -> Transition:
+        assert self._watch is not None
+        text = wording.baseline_text(self._watch.identity, self._quantities(), provisional=self._watch.provisional)
+        return Transition(None, None, "low", text, now.time_s, now.stamp, action="baseline")
 
     def _accept(self, baseline: Baseline, follower: Follower) -> None:
         self._learner = None
@@ -220,7 +227,8 @@ class Loop:
         return "watching" if self._watch is not None else "learning"
 
     def _say(self, now: _Moment, *, due: bool = False) -> Report:
-        transitions = self._book.take_transitions()
+        transitions = (*self._actions, *self._book.take_transitions())
+        self._actions = []
         due = due or now.time_s - self._last_report_s >= self.settings.publish_every_s or self.report is None
         if not due and not transitions and self.report is not None and self.report.state == self._state:
             return self._repeat(now)

@@ -2,9 +2,12 @@
 
 from __future__ import annotations
 
+from collections.abc import Mapping
+
 import numpy as np
 
 from rtid.judge.change import QuantityChange
+from rtid.report import Quantity
 
 CAUTION = (
     "Before you touch the machine: isolate and lock it, wait for stored energy and hot parts, mind automatic restart. "
@@ -20,6 +23,17 @@ _LOOK_FIRST = {
     "dead_time": "Look first at transport and signal delays: belt or fluid speed, sampling, a slow transmitter, play.",
 }
 _NAMES = {"dead_time": "dead time", "natural_frequency": "natural frequency", "damping_ratio": "damping ratio"}
+
+
+def baseline_text(identity: str, quantities: Mapping[str, Quantity], *, provisional: bool) -> str:
+    known = [f"{quantity_name(n)} {_figure(q)}" for n, q in quantities.items() if q.value is not None and n != "noise"]
+    rider = "; provisional, the false-alarm budget is not promised yet" if provisional else ""
+    return f"baseline {identity} accepted: {', '.join(known)}{rider}"
+
+
+def _figure(quantity: Quantity) -> str:
+    unit = "" if quantity.unit == "1" else f" {quantity.unit}"
+    return f"{quantity.value:.4g} ({quantity.low:.4g} … {quantity.high:.4g}){unit}"
 
 
 def quantity_name(name: str) -> str:
