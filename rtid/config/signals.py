@@ -4,12 +4,11 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 
-from paho.mqtt.client import topic_matches_sub
-
 from rtid.config.entry import Entry, Kind, Section
 from rtid.config.topics import TOPIC
 from rtid.config.values import TEXT, integer, named, number, pair
 from rtid.settings import Decode, MqttFeed, Place, Quality, Scale, Signal
+from rtid.topics import matches
 
 PLACE_KEYS: dict[Decode, str | None] = {"csv": "column", "json": "path", "senml": "name", "plain": None}
 
@@ -56,7 +55,7 @@ def _topic(entry: Entry, carrier: Carrier) -> str:
     if carrier.mqtt is None:
         entry.refuse("a serial source has no topics; remove it")
     topic = TOPIC(entry)
-    if not topic_matches_sub(carrier.mqtt.topic, topic):
+    if not matches(carrier.mqtt.topic, topic):
         entry.refuse(f"the source does not receive '{topic}'; expected a topic that '{carrier.mqtt.topic}' takes")
     return topic
 

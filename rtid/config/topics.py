@@ -1,22 +1,22 @@
-"""MQTT topic names and filters (MQTT 5.0, section 4.7): which are well formed."""
+"""The kinds of MQTT topics in the configuration: a filter to subscribe to, a topic that carries one value."""
 
 from __future__ import annotations
 
+from rtid import topics
 from rtid.config.entry import Entry, Kind
 from rtid.config.values import TEXT
 
 
 def _filter(entry: Entry) -> str:
-    pattern = TEXT(entry)
-    *before, last = pattern.split("/")
-    if "#" in before or any(len(level) > 1 and set(level) & {"+", "#"} for level in (*before, last)):
-        entry.refuse(f"'{pattern}' is no topic filter; expected '+' or '#' alone between slashes, '#' only at the end")
-    return pattern
+    text = TEXT(entry)
+    if not topics.is_filter(text):
+        entry.refuse(f"'{text}' is no topic filter; expected '+' or '#' alone between slashes, '#' only at the end")
+    return text
 
 
 def _topic(entry: Entry) -> str:
     topic = TEXT(entry)
-    if set(topic) & {"+", "#"}:
+    if topics.has_wildcard(topic):
         entry.refuse(f"'{topic}' holds a wildcard; expected the one topic that carries this value")
     return topic
 

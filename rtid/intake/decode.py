@@ -11,8 +11,8 @@ from functools import lru_cache
 from rtid.intake import checksum, decode_csv, decode_json, decode_plain, decode_senml
 from rtid.intake.decode_values import Message, Scalar, check_quality, number, scaled
 from rtid.intake.reading import Reading, Rejected
-from rtid.intake.topics import matches
 from rtid.settings import Place, Signal, Source
+from rtid.topics import matches
 
 MAX_PAYLOAD = 64 * 1024  # bytes
 _TOPICS_REMEMBERED = 256

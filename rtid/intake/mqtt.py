@@ -16,6 +16,7 @@ from rtid.intake.queue import ReadingQueue
 from rtid.intake.reading import Counts
 from rtid.intake.skew import Skew
 from rtid.settings import Broker, Source
+from rtid.topics import has_wildcard
 
 log = logging.getLogger("rtid.intake")
 
@@ -133,4 +134,4 @@ class MqttIntake:
 
 def _one_topic(filter_: str | None) -> str | None:
     """None for a filter that stands for several topics."""
-    return None if filter_ is None or "+" in filter_ or "#" in filter_ else filter_
+    return None if filter_ is None or has_wildcard(filter_) else filter_
