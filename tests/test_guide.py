@@ -74,7 +74,7 @@ def test_a_page_refers_only_to_pages_and_commands_that_exist(topic: str) -> None
 def test_an_unknown_topic_gets_the_nearest_one(capsys: pytest.CaptureFixture[str]) -> None:
     assert main(["guide", "configurations"]) == 64
     said = capsys.readouterr().err
-    assert "nearest: configuration;" in said
+    assert "(nearest valid name 'configuration')" in said
     assert said.count("\n") == 1
 
 

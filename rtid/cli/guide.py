@@ -6,8 +6,8 @@ import argparse
 from importlib import resources
 from typing import TYPE_CHECKING
 
-from rtid.cli.nearest import nearest
 from rtid.errors import UsageError
+from rtid.valid_names import one_of
 
 if TYPE_CHECKING:
     Subparsers = argparse._SubParsersAction[argparse.ArgumentParser]
@@ -44,7 +44,7 @@ def run(args: argparse.Namespace) -> int:
 def page(topic: str) -> str:
     """The Markdown of one topic. UsageError when there is none of that name."""
     if topic not in TOPICS:
-        raise UsageError(f"no topic {topic!r}; nearest: {nearest(topic, TOPICS)}; see 'rtid guide' for all")
+        raise UsageError(f"no topic {topic!r}; expected {one_of(topic, TOPICS)}")
     return resources.files("rtid.guide").joinpath(f"{topic}.md").read_text(encoding="utf-8")
 
 

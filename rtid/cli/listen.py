@@ -12,13 +12,13 @@ from typing import TYPE_CHECKING, Any
 
 from rtid import config
 from rtid.cli import logs
-from rtid.cli.nearest import nearest
 from rtid.errors import Unavailable, UsageError
 from rtid.intake.queue import ReadingQueue
 from rtid.intake.reading import Reading
 from rtid.intake.serial_port import reset_warning
 from rtid.service.intakes import Intake, make_intake, origin
 from rtid.settings import Node, Source
+from rtid.valid_names import one_of
 
 if TYPE_CHECKING:
     Subparsers = argparse._SubParsersAction[argparse.ArgumentParser]
@@ -122,7 +122,7 @@ def _chosen(node: Node, name: str | None) -> list[Source]:
     if name is None:
         return list(node.sources.values())
     if name not in node.sources:
-        raise UsageError(f"no source {name!r}; nearest: {nearest(name, node.sources)}")
+        raise UsageError(f"no source {name!r}; expected {one_of(name, node.sources)}")
     return [node.sources[name]]
 
 

@@ -12,8 +12,8 @@ from typing import Any, NoReturn
 
 from rtid import __doc__ as purpose
 from rtid import __version__
-from rtid.cli.nearest import nearest
 from rtid.errors import RtidError, UsageError
+from rtid.valid_names import one_of
 
 COMMANDS: dict[str, str] = {
     "demo": "a simulated plant that drifts, watched by the real service: two minutes, no hardware",
@@ -64,7 +64,7 @@ def main(argv: Sequence[str] | None = None) -> int:
 def _dispatch(arguments: list[str]) -> int:
     command = next((word for word in arguments if not word.startswith("-")), None)
     if command is not None and command not in COMMANDS:
-        raise UsageError(f"no command {command!r}; nearest: {nearest(command, COMMANDS)}; all: {', '.join(COMMANDS)}")
+        raise UsageError(f"no command {command!r}; expected {one_of(command, COMMANDS)}")
     try:
         return _run(command, arguments)
     except SystemExit as leaving:  # argparse, after --help and --version

@@ -8,13 +8,13 @@ import sys
 from typing import TYPE_CHECKING, Any
 
 from rtid import config
-from rtid.cli.nearest import nearest
 from rtid.cli.recorded_run import RecordedRun
 from rtid.errors import DataError, UsageError
 from rtid.intake.csv_layout import CsvLayout
 from rtid.intake.recorded import RecordedFeed
 from rtid.service.state_dir import make_folder
 from rtid.settings import Node
+from rtid.valid_names import one_of
 
 if TYPE_CHECKING:
     Subparsers = argparse._SubParsersAction[argparse.ArgumentParser]
@@ -67,7 +67,7 @@ def _feed(node: Node, text: str, layout: CsvLayout) -> RecordedFeed:
     if not equals or not path:
         raise UsageError(f"--feed {text}: write SOURCE=FILE.csv")
     if name not in node.sources:
-        raise UsageError(f"--feed {text}: no source {name!r}; nearest: {nearest(name, node.sources)}")
+        raise UsageError(f"--feed {text}: no source {name!r}; expected {one_of(name, node.sources)}")
     signals = tuple(signal.name for signal in node.sources[name].signals)
     periods = [loop.period_s for loop in node.loops.values() if not set(signals).isdisjoint(loop.signals)]
     restart_after_s = RESTART_PERIODS * min(periods, default=0.0)

@@ -2,18 +2,16 @@
 
 from __future__ import annotations
 
-import difflib
 from collections.abc import Callable, Iterable, Mapping
 from dataclasses import MISSING, dataclass, fields
 from typing import Any, Generic, NoReturn, TypeVar
 
 from rtid.config.yaml_lines import Item, below_path, printable
 from rtid.errors import ConfigError
+from rtid.valid_names import one_of
 
 T = TypeVar("T")
 D = TypeVar("D")
-
-_MOST_NAMES = 20  # a longer list of valid names helps nobody
 
 
 @dataclass(frozen=True, slots=True)
@@ -101,18 +99,6 @@ def record(what: str, make: Callable[..., T], kinds: Mapping[str, Kind[Any]]) ->
         return make(**section.values({key: kind for key, kind in kinds.items() if key not in required}), **needed)
 
     return Kind(what, take)
-
-
-def one_of(name: str, valid: Iterable[str]) -> str:
-    """'one of a, b, c (nearest valid name 'b')', as far as it helps."""
-    names = tuple(valid)
-    near = nearest(name, names)
-    listed = f"one of {', '.join(names)}" if len(names) <= _MOST_NAMES else f"one of {len(names)} names"
-    return f"{listed} (nearest valid name '{near}')" if near else listed
-
-
-def nearest(name: str, valid: Iterable[str]) -> str | None:
-    return next(iter(difflib.get_close_matches(name[:60], tuple(valid), n=1, cutoff=0.5)), None)
 
 
 def found(item: Item) -> str:

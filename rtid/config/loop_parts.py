@@ -6,7 +6,7 @@ from collections.abc import Callable
 from dataclasses import replace
 from typing import Any, get_args
 
-from rtid.config.entry import Entry, Section, one_of, record
+from rtid.config.entry import Entry, Section, record
 from rtid.config.values import FLAG, choice, number, pair, seconds
 from rtid.settings import (
     DEFAULT_ALARMS,
@@ -20,6 +20,7 @@ from rtid.settings import (
     Structure,
     Tolerance,
 )
+from rtid.valid_names import one_of
 
 STRUCTURES: tuple[Structure, ...] = ("output_error", "equation_error")
 PRIORITIES: tuple[Priority, ...] = get_args(Priority)

@@ -7,9 +7,10 @@ import re
 from collections.abc import Callable
 from typing import Literal, TypeVar
 
-from rtid.config.entry import Entry, Kind, nearest, one_of
+from rtid.config.entry import Entry, Kind
 from rtid.config.yaml_lines import Item, printable
 from rtid.settings import Range
+from rtid.valid_names import one_of
 
 T = TypeVar("T")
 
@@ -112,9 +113,7 @@ def signal_of(known: tuple[str, ...]) -> Kind[str]:
     def take(entry: Entry) -> str:
         name = TEXT(entry)
         if name not in known:
-            near = nearest(name, known)
-            mend = f"did you mean {near}?" if near else f"expected {one_of(name, known)}"
-            entry.refuse(f"no such signal {printable(name)}: {mend}")
+            entry.refuse(f"no such signal {printable(name)}; expected {one_of(name, known)}")
         return name
 
     return Kind("a signal as source.signal", take)

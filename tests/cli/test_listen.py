@@ -72,7 +72,7 @@ def test_no_reading_at_all_is_69_with_a_hint(tmp_path: Path) -> None:
 def test_an_unknown_source_gets_the_nearest_name(tmp_path: Path) -> None:
     ended = rtid("listen", configure(tmp_path), "drove")
     assert ended.returncode == 64
-    assert ended.stderr == "rtid: no source 'drove'; nearest: drive\n"
+    assert ended.stderr == "rtid: no source 'drove'; expected one of drive (nearest valid name 'drive')\n"
 
 
 def test_a_duration_is_a_number_above_zero(tmp_path: Path) -> None:

@@ -116,7 +116,7 @@ def test_a_command_that_this_version_does_not_have_is_not_offered(
 
 def test_a_mistyped_command_gets_the_nearest_one(capsys: pytest.CaptureFixture[str]) -> None:
     assert main(["reply"]) == 64
-    assert "nearest: replay;" in only_line(capsys.readouterr().err)
+    assert "(nearest valid name 'replay')" in only_line(capsys.readouterr().err)
 
 
 @pytest.mark.parametrize("arguments", [[], ["--debug"]])

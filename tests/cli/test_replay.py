@@ -130,7 +130,7 @@ def test_bad_rows_are_said_once_per_kind_and_the_good_ones_used(
 @pytest.mark.parametrize(
     ("feeds", "code", "words"),
     [
-        (["--feed", "drove=@GOOD"], 64, "no source 'drove'; nearest: drive"),
+        (["--feed", "drove=@GOOD"], 64, "no source 'drove'; expected one of drive"),
         (["--feed", "drive"], 64, "write SOURCE=FILE.csv"),
         (["--feed", "drive=@GOOD", "--feed", "drive=@GOOD"], 64, "drive is fed twice"),
         (["--feed", "drive=none.csv"], 66, "none.csv: no such file"),

@@ -219,10 +219,10 @@ LOOPS = [
     Mistake(
         "[drive.volts]",
         "[drive.voltz]",
-        "19: loops.belt.inputs[0]: no such signal drive.voltz: did you mean",
+        "19: loops.belt.inputs[0]: no such signal drive.voltz; expected one of",
         seen=False,
     ),
-    Mistake("[drive.volts]", "[zz]", "no such signal zz: expected one of drive.volts, drive.speed, hall.valve,"),
+    Mistake("[drive.volts]", "[zz]", "no such signal zz; expected one of drive.volts, drive.speed, hall.valve,"),
     Mistake("[drive.volts]", "drive.volts", "19: loops.belt.inputs: found the text 'drive.volts'; expected a list of"),
     Mistake("[drive.volts]", "[]", "19: loops.belt.inputs: found an empty list; expected a list of signals"),
     Mistake(
@@ -294,7 +294,7 @@ LOOPS = [
     in_loop("active_when: {above: 1}", "22: loops.belt.active_when.signal: missing; expected a signal as"),
     in_loop(
         "active_when: {signal: drive.volt, above: 1}",
-        "no such signal drive.volt: did you mean drive.volts?",
+        "(nearest valid name 'drive.volts')",
         seen=False,
     ),
     in_loop("active_when: {all: []}", "22: loops.belt.active_when.all: found an empty list; expected a list of"),
