@@ -6,8 +6,8 @@ from pathlib import Path
 
 import pytest
 
-from rtid import config, schemas
-from rtid.settings import DEFAULT_ALARMS, AlarmBudget, AlarmSetting, Condition, Gate, Loop, Node, Place, Tolerance
+from rtid import config
+from rtid.settings import AlarmBudget, AlarmSetting, Condition, Gate, Loop, Node, Place, Tolerance
 from tests.support.config_texts import BASE, load_text
 
 
@@ -55,11 +55,6 @@ def test_an_alarm_that_is_named_keeps_the_defaults_of_what_is_left_out(tmp_path:
         "plant_drift": AlarmSetting(priority="low", latching=True),
         "data_stale": AlarmSetting(priority="medium", off_delay_s=9.0),
     }
-
-
-def test_the_alarms_of_the_schema_are_those_there_are() -> None:
-    named = schemas.load("configuration")["$defs"]["loop"]["properties"]["alarms"]["propertyNames"]["enum"]
-    assert named == list(DEFAULT_ALARMS)
 
 
 def test_a_loop_knows_what_its_sources_say_of_its_signals(tmp_path: Path) -> None:
