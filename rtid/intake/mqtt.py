@@ -11,17 +11,14 @@ from typing import Any
 from paho.mqtt.client import Client, MQTTMessage
 
 from rtid import mqtt_client
-from rtid.intake.delivery import Delivery
+from rtid.intake.live_source import LiveSource
 from rtid.intake.queue import ReadingQueue
-from rtid.intake.reading import Counts
 from rtid.intake.skew import Skew
 from rtid.settings import Broker, Source
 from rtid.topics import has_wildcard
 
-log = logging.getLogger("rtid.intake")
 
-
-class MqttIntake:
+class MqttIntake(LiveSource):
     """The live feed of one MQTT source. `monotonic` gives the arrival times, in seconds.
 
     Connects, comes back and subscribes again by itself, also when the broker is not there at the start. Messages that
@@ -40,14 +37,11 @@ class MqttIntake:
     ) -> None:
         if source.mqtt is None:
             raise ValueError(f"{source.name} has no MQTT topic")
-        self.name = source.name
+        super().__init__(source, queue)
         self._feed = source.mqtt
         self._broker = broker
-        self._delivery = Delivery(source, queue)
         self._skew = Skew(_one_topic(source.signals[0].place.topic))
         self._monotonic = monotonic
-        self._connected_before = False
-        self._said = ""
         self._thread: threading.Thread | None = None
         self._client = mqtt_client.make_client(broker, client_id)
         self._client.on_connect = self._on_connect
@@ -55,15 +49,6 @@ class MqttIntake:
         self._client.on_disconnect = self._on_disconnect
         self._client.on_subscribe = self._on_subscribe
         self._client.on_message = self._on_message
-
-    @property
-    def counts(self) -> Counts:
-        return self._delivery.counts
-
-    @property
-    def connected(self) -> bool:
-        """True while the broker is there."""
-        return self.counts.connected
 
     @property
     def alive(self) -> bool:
@@ -89,10 +74,7 @@ class MqttIntake:
         if reason.is_failure:
             self._say(logging.ERROR, f"the broker at {self._address} refuses the connection: {reason}")
             return
-        self.counts.connected = True
-        self.counts.reconnects += self._connected_before
-        self._connected_before = True
-        self._say(logging.INFO, f"connected to the broker at {self._address}")
+        self._note_connected(f"connected to the broker at {self._address}")
         client.subscribe(self._feed.topic, self._feed.qos)
 
     def _on_connect_fail(self, *_: Any) -> None:
@@ -124,12 +106,6 @@ class MqttIntake:
     @property
     def _address(self) -> str:
         return f"{self._broker.host}:{self._broker.port}"
-
-    def _say(self, level: int, text: str) -> None:
-        """Log a change of state once, however often the same attempt fails."""
-        if text != self._said:
-            self._said = text
-            log.log(level, "%s: %s", self.name, text)
 
 
 def _one_topic(filter_: str | None) -> str | None:

@@ -16,10 +16,10 @@ from pathlib import Path
 
 from serial import Serial
 
-from rtid.intake.delivery import Delivery
 from rtid.intake.framing import LineFramer
+from rtid.intake.live_source import LiveSource
 from rtid.intake.queue import ReadingQueue
-from rtid.intake.reading import Counts, Rejected
+from rtid.intake.reading import Rejected
 from rtid.settings import SerialPort, Source
 
 DEVICES = Path("/dev/serial")
@@ -31,10 +31,8 @@ LEAST_STEP_S = 1e-6  # between the arrival times of two lines
 PORT_ERRORS = (OSError, TypeError, ValueError, termios.error)  # TypeError: pyserial, when the port goes during a read
 _PARITY = {"none": "N", "even": "E", "odd": "O"}
 
-log = logging.getLogger("rtid.intake")
 
-
-class SerialIntake:
+class SerialIntake(LiveSource):
     """The live feed of one serial source. `monotonic` gives the arrival times, in seconds."""
 
     def __init__(
@@ -42,9 +40,8 @@ class SerialIntake:
     ) -> None:
         if source.serial is None:
             raise ValueError(f"{source.name} has no serial port")
-        self.name = source.name
+        super().__init__(source, queue)
         self._settings = source.serial
-        self._delivery = Delivery(source, queue)
         self._framer = LineFramer()
         self._monotonic = monotonic
         self._pause_s = PAUSE_S if source.has_payload_time else 0.0
@@ -52,18 +49,7 @@ class SerialIntake:
         self._stopping = threading.Event()
         self._port: Serial | None = None
         self._changing = threading.Lock()  # no port is woken while it closes
-        self._opened_before = False
-        self._said = ""
         self._thread = threading.Thread(target=self._run, name=f"intake-{source.name}", daemon=True)
-
-    @property
-    def counts(self) -> Counts:
-        return self._delivery.counts
-
-    @property
-    def connected(self) -> bool:
-        """True while the port is open."""
-        return self.counts.connected
 
     @property
     def alive(self) -> bool:
@@ -118,10 +104,7 @@ class SerialIntake:
     def _opened(self) -> None:
         self._framer.reset()
         self._last_read = self._monotonic()
-        self.counts.connected = True
-        self.counts.reconnects += self._opened_before
-        self._opened_before = True
-        self._say(logging.INFO, f"{self._settings.port} is open")
+        self._note_connected(f"{self._settings.port} is open")
 
     def _read(self, port: Serial) -> None:
         overlong = self._framer.overlong
@@ -140,12 +123,6 @@ class SerialIntake:
         for i, line in enumerate(lines, start=1):
             self._delivery.take(line, arrival=begin + i * step)
         self._last_read = now
-
-    def _say(self, level: int, text: str) -> None:
-        """Log a change of state once, however often the same attempt fails."""
-        if text != self._said:
-            self._said = text
-            log.log(level, "%s: %s", self.name, text)
 
 
 def open_port(settings: SerialPort) -> Serial:

@@ -10,9 +10,9 @@ import pytest
 from rtid import settings
 from rtid.intake.mqtt import MqttIntake
 from rtid.intake.queue import ReadingQueue
-from rtid.intake.reading import Reading
 from rtid.settings import MqttFeed, Source
 from tests.support.broker import Broker, publish
+from tests.support.running_source import RunningSource
 from tests.support.sources import signal, source
 from tests.support.wait import wait_until
 
@@ -29,22 +29,15 @@ def _short_back_off(monkeypatch: pytest.MonkeyPatch) -> None:
     monkeypatch.setattr("rtid.mqtt_client.RECONNECT_S", (1, 1))
 
 
-class Running:
-    """A started source, subscribed when the block is entered; `**broker` are further settings of the broker."""
+class Running(RunningSource):
+    """A started source on a broker; `**broker` are further settings of the broker."""
+
+    intake: MqttIntake
 
     def __init__(self, port: int, of: Source = HALL, *, client_id: str = "rtid-test", **broker: Any) -> None:
-        self.queue = ReadingQueue()
         self.port = port
-        self.intake = MqttIntake(of, settings.Broker(port=port, **broker), self.queue, client_id=client_id)
-
-    def __enter__(self) -> Running:
-        self.intake.start()
-        return self
-
-    def __exit__(self, *_: object) -> None:
-        self.intake.stop()
-        assert not self.intake.alive
-        assert not self.intake.connected
+        queue = ReadingQueue()
+        super().__init__(MqttIntake(of, settings.Broker(port=port, **broker), queue, client_id=client_id), queue)
 
     def wait_subscribed(self, unwanted: str = "plant/hall/nothing") -> None:
         """Publish on a topic that no signal wants until a message arrives."""
@@ -56,16 +49,6 @@ class Running:
             return self.intake.counts.messages > before
 
         wait_until(heard, what="the subscription")
-
-    def wait_for(self, count: int) -> list[Reading]:
-        readings: list[Reading] = []
-
-        def enough() -> bool:
-            readings.extend(item for item in self.queue.get(0.0) if isinstance(item, Reading))
-            return len(readings) >= count
-
-        wait_until(enough, what=f"{count} readings")
-        return readings
 
 
 def test_messages_become_readings_of_the_signals_on_their_topics(mqtt5_broker: Broker) -> None:

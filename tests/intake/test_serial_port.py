@@ -16,6 +16,7 @@ from rtid.intake.reading import Reading
 from rtid.intake.serial_port import SerialIntake, open_port, port_names, reset_warning, why_lost
 from rtid.settings import Place, SerialPort, Source, TimeField
 from tests.support.pty import PtyDevice
+from tests.support.running_source import RunningSource
 from tests.support.sources import signal, source
 from tests.support.wait import wait_until
 
@@ -36,33 +37,17 @@ def drive(port: str, *, payload_time: bool = False) -> Source:
     return source("csv", signal("drive.volts", column=1), serial=SerialPort(port), time=time)
 
 
-class Running:
-    """A started source; what came so far stands in `readings`."""
+class Running(RunningSource):
+    """A started source on a port."""
+
+    intake: SerialIntake
 
     def __init__(self, of: Source) -> None:
-        self.queue = ReadingQueue()
-        self.intake = SerialIntake(of, self.queue)
-        self.readings: list[Reading] = []
-
-    def __enter__(self) -> Running:
-        self.intake.start()
-        return self
-
-    def __exit__(self, *_: object) -> None:
-        self.intake.stop()
-        assert not self.intake.alive
-        assert not self.intake.connected
+        queue = ReadingQueue()
+        super().__init__(SerialIntake(of, queue), queue)
 
     def wait_connected(self) -> None:
         wait_until(lambda: self.intake.connected, what="the port is open")
-
-    def wait_for(self, count: int) -> list[Reading]:
-        def enough() -> bool:
-            self.readings += [item for item in self.queue.get(0.0) if isinstance(item, Reading)]
-            return len(self.readings) >= count
-
-        wait_until(enough, what=f"{count} readings")
-        return self.readings
 
 
 def test_every_line_of_a_fast_device_comes_through_in_order(device: PtyDevice) -> None:
