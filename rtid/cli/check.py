@@ -4,24 +4,23 @@ from __future__ import annotations
 
 import argparse
 import json
-from typing import TYPE_CHECKING, Any
+from typing import Any
 
 from rtid import config, schemas
+from rtid.cli.arguments import Subparsers, add_command, add_config, add_json
 from rtid.cli.plan import plan
-
-if TYPE_CHECKING:
-    Subparsers = argparse._SubParsersAction[argparse.ArgumentParser]
 
 
 def add(subparsers: Subparsers) -> None:
-    parser = subparsers.add_parser(
+    parser = add_command(
+        subparsers,
         "check",
         description="Read the configuration and say what would run. Opens no port and no connection.",
-        epilog="example:\n  rtid check node.yaml",
+        example="rtid check node.yaml",
     )
-    parser.add_argument("config", metavar="CONFIG", nargs="?", help="the configuration (YAML)")
+    add_config(parser, nargs="?")
     parser.add_argument("--schema", action="store_true", help="print the JSON Schema of a configuration, for editors")
-    parser.add_argument("--json", action="store_true", help="print one JSON document and nothing else")
+    add_json(parser)
     parser.set_defaults(parser=parser)
 
 

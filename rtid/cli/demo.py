@@ -12,18 +12,16 @@ import time
 from collections.abc import Iterator
 from contextlib import contextmanager
 from pathlib import Path
-from typing import TYPE_CHECKING, Any
+from typing import Any
 
 from rtid import config
 from rtid.cli import logs
+from rtid.cli.arguments import Subparsers, add_command
 from rtid.cli.demo_configuration import PERIOD_S, configuration
 from rtid.cli.demo_story import Story, comparison
 from rtid.cli.demo_watch import RunningService
 from rtid.cli.plant_feed import PlantFeed
 from rtid.plants.conveyor import Ageing, Conveyor
-
-if TYPE_CHECKING:
-    Subparsers = argparse._SubParsersAction[argparse.ArgumentParser]
 
 USUAL_S = 110.0
 LEAST_S = 60.0  # below this there is no room for a baseline and a change
@@ -32,11 +30,12 @@ BASELINE_SHARE, CHANGE_SHARE, CHANGE_LENGTH_SHARE = 0.27, 0.45, 0.15  # of the w
 
 
 def add(subparsers: Subparsers) -> None:
-    parser = subparsers.add_parser(
+    parser = add_command(
+        subparsers,
         "demo",
         description="A simulated conveyor motor drifts; the real service watches it through a pseudo-terminal.\n"
         "Everything in it is invented. Exit code 0 when the drift was seen, else 1.",
-        epilog="example:\n  rtid demo --seconds 110 --seed 1",
+        example="rtid demo --seconds 110 --seed 1",
     )
     parser.add_argument(
         "--seconds",

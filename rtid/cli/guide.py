@@ -4,13 +4,10 @@ from __future__ import annotations
 
 import argparse
 from importlib import resources
-from typing import TYPE_CHECKING
 
+from rtid.cli.arguments import Subparsers, add_command
 from rtid.errors import UsageError
 from rtid.valid_names import one_of
-
-if TYPE_CHECKING:
-    Subparsers = argparse._SubParsersAction[argparse.ArgumentParser]
 
 TOPICS = (
     "start",
@@ -28,10 +25,11 @@ TOPICS = (
 
 
 def add(subparsers: Subparsers) -> None:
-    parser = subparsers.add_parser(
+    parser = add_command(
+        subparsers,
         "guide",
         description="The manual, offline. Without TOPIC: the list of topics.",
-        epilog="example:\n  rtid guide configuration | less",
+        example="rtid guide configuration | less",
     )
     parser.add_argument("topic", nargs="?", metavar="TOPIC", help=", ".join(TOPICS))
 

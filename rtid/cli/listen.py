@@ -8,10 +8,11 @@ import os
 import sys
 import time
 from collections.abc import Sequence
-from typing import TYPE_CHECKING, Any
+from typing import Any
 
 from rtid import config
 from rtid.cli import logs
+from rtid.cli.arguments import Subparsers, add_command, add_config, add_json
 from rtid.errors import Unavailable, UsageError
 from rtid.intake.queue import ReadingQueue
 from rtid.intake.reading import Reading
@@ -20,24 +21,22 @@ from rtid.service.intakes import Intake, make_intake, origin
 from rtid.settings import Node, Source
 from rtid.valid_names import one_of
 
-if TYPE_CHECKING:
-    Subparsers = argparse._SubParsersAction[argparse.ArgumentParser]
-
 WAIT_S = 0.1
 TERMINAL_GAP_S = 0.1  # on a terminal at most ten lines a second and source: more cannot be read
 
 
 def add(subparsers: Subparsers) -> None:
-    parser = subparsers.add_parser(
+    parser = add_command(
+        subparsers,
         "listen",
         description="Show the decoded readings of the sources, then rate, skew, losses and decoding errors.\n"
         "Ends with Ctrl-C or after --seconds. Nothing is learnt, stored or published.",
-        epilog="example:\n  rtid listen node.yaml drive --seconds 10",
+        example="rtid listen node.yaml drive --seconds 10",
     )
-    parser.add_argument("config", metavar="CONFIG", help="the configuration (YAML)")
+    add_config(parser)
     parser.add_argument("source", metavar="SOURCE", nargs="?", help="one source only; without it all of them")
     parser.add_argument("--seconds", type=_seconds, metavar="N", help="stop after so long")
-    parser.add_argument("--json", action="store_true", help="print one JSON document at the end, and nothing else")
+    add_json(parser)
 
 
 def run(args: argparse.Namespace) -> int:

@@ -5,9 +5,10 @@ from __future__ import annotations
 import argparse
 import json
 import sys
-from typing import TYPE_CHECKING, Any
+from typing import Any
 
 from rtid import config
+from rtid.cli.arguments import Subparsers, add_command, add_config, add_json
 from rtid.cli.recorded_run import RecordedRun
 from rtid.errors import DataError, UsageError
 from rtid.intake.csv_layout import CsvLayout
@@ -16,21 +17,18 @@ from rtid.service.state_dir import make_folder
 from rtid.settings import Node
 from rtid.valid_names import one_of
 
-if TYPE_CHECKING:
-    Subparsers = argparse._SubParsersAction[argparse.ArgumentParser]
-
-
 RESTART_PERIODS = 10  # a jump back of more than so many periods may be a restart of the device
 
 
 def add(subparsers: Subparsers) -> None:
-    parser = subparsers.add_parser(
+    parser = add_command(
+        subparsers,
         "replay",
         description="Run the same pipeline over recorded data; leave snapshots, trends, events and a summary in DIR.\n"
         "Opens no port and no connection; reads and writes no state of a service.",
-        epilog="example:\n  rtid replay node.yaml --feed drive=drive.csv --out result",
+        example="rtid replay node.yaml --feed drive=drive.csv --out result",
     )
-    parser.add_argument("config", metavar="CONFIG", help="the configuration (YAML)")
+    add_config(parser)
     parser.add_argument(
         "--feed",
         metavar="SOURCE=FILE.csv",
@@ -43,7 +41,7 @@ def add(subparsers: Subparsers) -> None:
     parser.add_argument("--decimal", default=".", metavar="C", help="decimal mark (default .)")
     parser.add_argument("--time-format", metavar="FORMAT", help="of the time, e.g. '%%d.%%m.%%Y %%H:%%M:%%S'")
     parser.add_argument("--time-column", metavar="NAME", default="time_s", help="column of the time (default time_s)")
-    parser.add_argument("--json", action="store_true", help="print the summary as one JSON document and nothing else")
+    add_json(parser)
 
 
 def run(args: argparse.Namespace) -> int:

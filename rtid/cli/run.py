@@ -4,23 +4,21 @@ from __future__ import annotations
 
 import argparse
 import signal
-from typing import TYPE_CHECKING
 
 from rtid import config
 from rtid.cli import logs
+from rtid.cli.arguments import Subparsers, add_command, add_config
 from rtid.service.service import Service
-
-if TYPE_CHECKING:
-    Subparsers = argparse._SubParsersAction[argparse.ArgumentParser]
 
 
 def add(subparsers: Subparsers) -> None:
-    parser = subparsers.add_parser(
+    parser = add_command(
+        subparsers,
         "run",
         description="The service, in the foreground. It ends in good order on SIGTERM and on Ctrl-C.",
-        epilog="example:\n  rtid run /etc/rtid/node.yaml",
+        example="rtid run /etc/rtid/node.yaml",
     )
-    parser.add_argument("config", metavar="CONFIG", help="the configuration (YAML)")
+    add_config(parser)
 
 
 def run(args: argparse.Namespace) -> int:
