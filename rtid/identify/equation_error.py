@@ -15,6 +15,7 @@ from numpy.typing import NDArray
 from rtid.identify.least_squares import LeastSquaresStack
 from rtid.identify.record import Record
 from rtid.identify.structure import Fit
+from rtid.kept import Kept
 
 Array = NDArray[np.float64]
 Mask = NDArray[np.bool_]
@@ -23,8 +24,10 @@ MIN_ROWS = 200
 START_ERROR = 0.2  # standard error of ln|gain| at which an estimate is worth publishing
 
 
-class Regressors:
+class Regressors(Kept):
     """Makes the rows [-y(t-1)…, u(t-d-1)…, 1] of every dead time d, in pieces of any length."""
+
+    KEPT = ("_inputs", "_output", "_ok")
 
     def __init__(self, order: int, delays: tuple[int, ...]) -> None:
         self._order = order
@@ -141,8 +144,10 @@ def fit_of(stack: LeastSquaresStack, delays: tuple[int, ...], centre: Array) -> 
     )  # fmt: skip
 
 
-class EquationPredictor:
+class EquationPredictor(Kept):
     """`structure.Predictor` of an ARX model."""
+
+    KEPT = ("_regressors",)
 
     def __init__(self, structure: EquationError, fit: Fit) -> None:
         self._theta = fit.theta
@@ -165,8 +170,10 @@ class EquationPredictor:
         self._regressors.break_off()
 
 
-class BankEstimator:
+class BankEstimator(Kept):
     """`structure.Estimator`: every dead time of the bank at once; learns only from blocks that bring information."""
+
+    KEPT = ("_fit", "_stack", "_regressors", "_squares", "_quiet_rows", "invalid")
 
     def __init__(
         self, structure: EquationError, stack: LeastSquaresStack, regressors: Regressors, *, fit: Fit, memory: float

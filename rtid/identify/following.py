@@ -24,6 +24,7 @@ from rtid.identify.whitening import (
     autoregression,
     long_run_ratio,
 )
+from rtid.kept import Kept
 
 Array = NDArray[np.float64]
 Mask = NDArray[np.bool_]
@@ -32,8 +33,13 @@ _LOG_STEP = 0.3
 _RENEW_EVERY = 8  # blocks between two noise models
 
 
-class FollowingEstimator:
+class FollowingEstimator(Kept):
     """`structure.Estimator` for an output-error model. `memory`: rows after which a datum counts 1/e."""
+
+    KEPT = (
+        "_fit", "_covariance", "_spread", "_prior", "_weight", "_blocks", "invalid", "_predictor", "_whitener",
+        "_noise", "_leftover", "_forgetting",
+    )  # fmt: skip
 
     def __init__(self, plant: Plant, fit: Fit, record: Record, *, memory: float) -> None:
         self._plant = plant

@@ -8,13 +8,17 @@ from __future__ import annotations
 import numpy as np
 from numpy.typing import NDArray
 
+from rtid.kept import Kept
+
 Array = NDArray[np.float64]
 
 KNOWN = 50.0  # information over prior information: the window alone knows the direction to 1/7 of its prior deviation
 
 
-class SubspaceForgetting:
+class SubspaceForgetting(Kept):
     """Information R (p, p) and the window's own information W (p, p), both in units of the noise."""
+
+    KEPT = ("information", "window", "_prior")
 
     def __init__(self, information: Array, window: Array, prior: Array) -> None:
         self.information = information

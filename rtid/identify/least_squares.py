@@ -10,11 +10,15 @@ from __future__ import annotations
 import numpy as np
 from numpy.typing import NDArray
 
+from rtid.kept import Kept
+
 Array = NDArray[np.float64]
 
 
-class LeastSquaresStack:
+class LeastSquaresStack(Kept):
     """c models with p parameters each. `deviation`: prior standard deviation of every parameter around zero."""
+
+    KEPT = ("triangle", "weight")
 
     def __init__(self, candidates: int, parameters: int, *, deviation: float = 1e6) -> None:
         self.p = parameters

@@ -7,6 +7,8 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
+from rtid.kept import Kept
+
 Array = NDArray[np.float64]
 Mask = NDArray[np.bool_]
 
@@ -33,8 +35,15 @@ class Record:
         return self.part(0, middle), self.part(middle, len(self))
 
 
-class RecordKeeper:
+def blank_record(inputs: Array) -> Record:
+    """One row that counts for nothing, at the inputs (n,): what is made on it waits for its state."""
+    return Record(inputs[None, :], np.zeros(1), np.zeros(1, dtype=np.bool_), (0,))
+
+
+class RecordKeeper(Kept):
     """Collects blocks of rows, the newest `limit` at most."""
+
+    KEPT = ("_blocks", "rows")
 
     def __init__(self, limit: int) -> None:
         self._limit = limit

@@ -11,6 +11,7 @@ from rtid.identify.held import SHAPE_NAMES, HeldMap, held_map
 from rtid.identify.record import Record
 from rtid.identify.simulator import Simulator
 from rtid.identify.structure import Fit
+from rtid.kept import Kept
 
 Array = NDArray[np.float64]
 Mask = NDArray[np.bool_]
@@ -67,8 +68,10 @@ class Plant:
         return values | {"dead_time": float(theta[-2]), "offset": float(theta[-1] - gain * fit.centre[0])}
 
 
-class SimulatedPredictor:
+class SimulatedPredictor(Kept):
     """`structure.Predictor` of an output-error model."""
+
+    KEPT = ("_centre", "_offset", "simulator")
 
     def __init__(self, plant: Plant, fit: Fit, level: Array) -> None:
         self._centre = float(fit.centre[0])

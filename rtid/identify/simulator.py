@@ -7,15 +7,18 @@ from numpy.typing import NDArray
 
 from rtid.identify.held import HeldMap
 from rtid.identify.recursion import State, all_pole
+from rtid.kept import Kept
 
 Array = NDArray[np.float64]
 
 
-class Simulator:
+class Simulator(Kept):
     """x = B/F·u, fed with the input alone and never with the measured output.
 
     `depth` is the longest dead time in rows that `model` will ever have while this simulator lives.
     """
+
+    KEPT = ("_inputs", "_filtered", "_x", "_x_filtered")
 
     def __init__(self, model: HeldMap, *, depth: int, level: float) -> None:
         self._depth = depth + 3

@@ -3,12 +3,12 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
-from typing import Protocol
+from typing import Any, Protocol
 
 import numpy as np
 from numpy.typing import NDArray
 
-from rtid.identify.record import Record
+from rtid.identify.record import Record, blank_record
 
 Array = NDArray[np.float64]
 Mask = NDArray[np.bool_]
@@ -47,6 +47,10 @@ class Predictor(Protocol):
         """After a gap: stand at the steady state of the present inputs, shape (n,)."""
         ...
 
+    def to_state(self) -> dict[str, Any]: ...
+
+    def load_state(self, state: dict[str, Any]) -> None: ...
+
 
 class Estimator(Protocol):
     """A model whose parameters follow the plant, a block at a time."""
@@ -65,6 +69,10 @@ class Estimator(Protocol):
         ...
 
     def restart(self, inputs: Array) -> None: ...
+
+    def to_state(self) -> dict[str, Any]: ...
+
+    def load_state(self, state: dict[str, Any]) -> None: ...
 
 
 class Structure(Protocol):
@@ -102,3 +110,11 @@ class Structure(Protocol):
     def transfer(self, fit: Fit) -> tuple[Array, Array, int]:
         """Numerator and denominator in ascending powers of q^-1, and the whole rows of delay before them."""
         ...
+
+
+def restored_estimator(structure: Structure, state: dict[str, Any], *, memory: float) -> Estimator:
+    """An estimator that goes on from `Estimator.to_state()`."""
+    fit: Fit = state["_fit"]
+    estimator = structure.estimator(fit, blank_record(fit.centre), memory=memory)
+    estimator.load_state(state)
+    return estimator

@@ -7,6 +7,8 @@ import math
 import numpy as np
 from numpy.typing import NDArray
 
+from rtid.kept import Kept
+
 Array = NDArray[np.float64]
 Mask = NDArray[np.bool_]
 
@@ -54,8 +56,10 @@ def long_run_ratio(covariance: Array) -> float:
     return max(1.0, float(1.0 + 2.0 * (weights @ covariance[1:]) / covariance[0]))
 
 
-class RunningAutocovariance:
+class RunningAutocovariance(Kept):
     """Exponentially weighted autocovariances, lags 0 … n, of a series that comes in pieces of any length."""
+
+    KEPT = ("covariance", "_tail")
 
     def __init__(self, covariance: Array) -> None:
         self.covariance = covariance
@@ -79,8 +83,10 @@ def _bic(variance: float, rows: float, order: int) -> float:
     return rows * math.log(max(variance, 1e-300)) + order * math.log(max(rows, 2.0))
 
 
-class Whitener:
+class Whitener(Kept):
     """ε → A(q)ε and ψ → A(q)ψ, in pieces of any length; a row counts only if every row it touches was good."""
+
+    KEPT = ("coefficients", "_residual", "_sensitivity", "_ok")
 
     def __init__(self, columns: int) -> None:
         self._residual = np.zeros(MAX_ORDER)

@@ -5,6 +5,7 @@ from __future__ import annotations
 from collections.abc import Mapping
 from dataclasses import dataclass, replace
 
+from rtid.kept import Kept
 from rtid.report import ActiveAlarm, Transition, TransitionName
 from rtid.settings import DEFAULT_ALARMS, AlarmSetting
 
@@ -24,20 +25,25 @@ class Finding:
 
 
 @dataclass(slots=True)
-class _Entry:
+class AlarmEntry:
+    """Where one alarm stands in its life."""
+
     pending_since: float | None = None  # data time at which the condition began or ended and still waits for its delay
     active: ActiveAlarm | None = None
     acknowledged: bool = False
     clear: bool = True  # the condition is absent though the alarm may be latched
     last: Finding = Finding(False)
+    shelved_until: float | None = None  # data time
 
 
-class AlarmBook:
+class AlarmBook(Kept):
     """All alarms of one loop. `settings`: per alarm name; names not in it have the contract's defaults."""
+
+    KEPT = ("_entries",)
 
     def __init__(self, settings: Mapping[str, AlarmSetting]) -> None:
         self._settings = DEFAULT_ALARMS | dict(settings)
-        self._entries: dict[tuple[str, str | None], _Entry] = {}
+        self._entries: dict[tuple[str, str | None], AlarmEntry] = {}
         self._transitions: list[Transition] = []
 
     def note(self, alarm: str, finding: Finding, *, time_s: float, stamp: float, signal: str | None = None) -> None:
@@ -46,7 +52,7 @@ class AlarmBook:
         if entry is None:
             if not finding.present:
                 return
-            entry = self._entries[(alarm, signal)] = _Entry()
+            entry = self._entries[(alarm, signal)] = AlarmEntry()
         setting = self._settings[alarm]
         key = (alarm, signal)
         if entry.active is None:
@@ -78,6 +84,56 @@ class AlarmBook:
             entry.active = replace(entry.active, acknowledged=True)
         return True
 
+    @property
+    def has_transitions(self) -> bool:
+        return bool(self._transitions)
+
+    def withdraw(self, alarms: tuple[str, ...], *, time_s: float, stamp: float) -> None:
+        """What these stood for is void, latched or not."""
+        for alarm in alarms:
+            entry = self._entries.get((alarm, None))
+            if entry is not None and entry.active is not None:
+                self._finish((alarm, None), entry, time_s, stamp)
+
+    def shelve(self, alarm: str, *, signal: str | None, until_s: float, by: str, time_s: float, stamp: float) -> None:
+        """Nothing is heard of the alarm until `until_s` of data time."""
+        entry = self._entries.setdefault((alarm, signal), AlarmEntry())
+        entry.shelved_until = until_s
+        self._transitions.append(self._transition((alarm, signal), "shelved", entry.last, time_s, stamp, by=by))
+
+    def unshelve(self, alarm: str, *, signal: str | None, by: str | None, time_s: float, stamp: float) -> bool:
+        """False when it was not shelved. An alarm that stands is heard again."""
+        key = (alarm, signal)
+        entry = self._entries.get(key)
+        if entry is None or entry.shelved_until is None:
+            return False
+        entry.shelved_until = None
+        standing = entry.active is not None
+        self._transitions.append(
+            self._transition(key, "unshelved", entry.last, time_s, stamp, by=by, retain=standing)
+        )
+        if standing:
+            self._transitions.append(self._transition(key, "active", entry.last, time_s, stamp))
+        else:
+            del self._entries[key]
+        return True
+
+    def end_shelvings(self, *, time_s: float, stamp: float) -> None:
+        """Unshelve what has been shelved long enough."""
+        for (alarm, signal), entry in list(self._entries.items()):
+            if entry.shelved_until is not None and time_s >= entry.shelved_until:
+                self.unshelve(alarm, signal=signal, by=None, time_s=time_s, stamp=stamp)
+
+    def shelved(self) -> list[tuple[str, float]]:
+        """Names of the shelved alarms and the data times at which that ends."""
+        return [(name, e.shelved_until) for (name, _), e in self._entries.items() if e.shelved_until is not None]
+
+    def shift(self, delta_s: float) -> None:
+        """The device's clock began anew: what waits, waits as long as before."""
+        for entry in self._entries.values():
+            entry.pending_since = None if entry.pending_since is None else entry.pending_since + delta_s
+            entry.shelved_until = None if entry.shelved_until is None else entry.shelved_until + delta_s
+
     def take_transitions(self) -> tuple[Transition, ...]:
         taken, self._transitions = tuple(self._transitions), []
         return taken
@@ -86,9 +142,10 @@ class AlarmBook:
         return any(name == alarm and entry.active is not None for (name, _), entry in self._entries.items())
 
     def active(self) -> tuple[ActiveAlarm, ...]:
-        return tuple(entry.active for entry in self._entries.values() if entry.active is not None)
+        standing = (e for e in self._entries.values() if e.shelved_until is None)
+        return tuple(entry.active for entry in standing if entry.active is not None)
 
-    def _maybe_raise(self, key: tuple[str, str | None], entry: _Entry, finding: Finding, *when: float) -> None:
+    def _maybe_raise(self, key: tuple[str, str | None], entry: AlarmEntry, finding: Finding, *when: float) -> None:
         if not finding.present:
             entry.pending_since = None
             return
@@ -100,31 +157,33 @@ class AlarmBook:
             entry.active = ActiveAlarm(key[0], setting.priority, stamp, finding.text, key[1], finding.quantity)
             self._emit(key, entry, "active", finding, time_s, stamp)
 
-    def _maybe_clear(self, key: tuple[str, str | None], entry: _Entry, setting: AlarmSetting, *when: float) -> None:
+    def _maybe_clear(self, key: tuple[str, str | None], entry: AlarmEntry, setting: AlarmSetting, *when: float) -> None:
         time_s, stamp = when
         entry.pending_since = time_s if entry.pending_since is None else entry.pending_since
         held = setting.latching and not entry.acknowledged
         if time_s - entry.pending_since >= setting.off_delay_s and not held:
             self._finish(key, entry, time_s, stamp)
 
-    def _finish(self, key: tuple[str, str | None], entry: _Entry, time_s: float, stamp: float) -> None:
+    def _finish(self, key: tuple[str, str | None], entry: AlarmEntry, time_s: float, stamp: float) -> None:
         text = f"back to normal: {key[0].replace('_', ' ')}"
         finding = replace(entry.last, present=False, text=text)
-        entry.active, entry.pending_since = None, None
+        entry.active, entry.pending_since, entry.last = None, None, finding
+        if entry.shelved_until is not None:
+            return
         self._transitions.append(
             self._transition(key, "cleared", finding, time_s, stamp, retain=not entry.acknowledged)
         )
-        entry.last = finding
         if entry.acknowledged:
             del self._entries[key]
 
     def _emit(
-        self, key: tuple[str, str | None], entry: _Entry, name: TransitionName, finding: Finding, *when: float
+        self, key: tuple[str, str | None], entry: AlarmEntry, name: TransitionName, finding: Finding, *when: float
     ) -> None:
         assert entry.active is not None
         entry.active = replace(entry.active, text=finding.text, quantity=finding.quantity)
         entry.last = finding
-        self._transitions.append(self._transition(key, name, finding, *when))
+        if entry.shelved_until is None:
+            self._transitions.append(self._transition(key, name, finding, *when))
 
     def _transition(
         self, key: tuple[str, str | None], name: TransitionName, finding: Finding, *when: float,

@@ -8,9 +8,10 @@ import numpy as np
 from numpy.typing import NDArray
 
 from rtid.identify.delta import quantity_jacobian
-from rtid.identify.record import Record
+from rtid.identify.record import Record, blank_record
 from rtid.identify.structure import Fit, Predictor, Structure
 from rtid.identify.whitening import Whitener
+from rtid.kept import Kept
 
 Array = NDArray[np.float64]
 Mask = NDArray[np.bool_]
@@ -43,8 +44,10 @@ class Refusal:
     stale_half: bool = False
 
 
-class Follower:
+class Follower(Kept):
     """The accepted model beside the plant: innovations and their sensitivities, in units of its noise."""
+
+    KEPT = ("_predictor", "_whitener")
 
     def __init__(self, predictor: Predictor, whitener: Whitener, unit: float) -> None:
         self._predictor = predictor
@@ -58,6 +61,14 @@ class Follower:
     def restart(self, inputs: Array) -> None:
         self._predictor.restart(inputs)
         self._whitener.break_off()
+
+
+def follower_of(structure: Structure, baseline: Baseline) -> Follower:
+    """The model of an old baseline, at the steady state of its mean inputs."""
+    fit = baseline.fit
+    whitener = Whitener(len(fit.theta))
+    whitener.coefficients = fit.ar
+    return Follower(structure.run(blank_record(fit.centre), fit)[3], whitener, baseline.unit)
 
 
 def accept(

@@ -7,14 +7,17 @@ import math
 import numpy as np
 from numpy.typing import NDArray
 
+from rtid.kept import Kept
 from rtid.settings import Condition, Gate
 
 Array = NDArray[np.float64]
 Mask = NDArray[np.bool_]
 
 
-class GateKeeper:
+class GateKeeper(Kept):
     """Remembers how long the conditions have held. No gate: always active."""
+
+    KEPT = ("_held_rows",)
 
     def __init__(self, gate: Gate | None, columns: tuple[str, ...], period: float) -> None:
         self._conditions = [(columns.index(c.signal), c) for c in gate.conditions] if gate else []

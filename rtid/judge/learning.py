@@ -2,12 +2,15 @@
 
 from __future__ import annotations
 
+from typing import Any
+
 import numpy as np
 from numpy.typing import NDArray
 
 from rtid.identify.record import RecordKeeper
-from rtid.identify.structure import Estimator, Structure
-from rtid.judge.baseline import INFORMED, Baseline, Follower, Refusal, accept
+from rtid.identify.structure import Estimator, Structure, restored_estimator
+from rtid.judge.baseline import Baseline, Follower, Refusal, accept
+from rtid.kept import Kept
 
 Array = NDArray[np.float64]
 Mask = NDArray[np.bool_]
@@ -18,11 +21,13 @@ _RETRY = 1.4  # the next attempt at a fit comes at this many times the rows
 _REFIT = 2.0
 
 
-class Learner:
+class Learner(Kept):
     """Keeps the rows, starts the estimator, and accepts the baseline when the data carry one.
 
     `after_rows`: the least number of rows before a baseline; `memory`: the estimator's, in rows.
     """
+
+    KEPT = ("_keeper", "_next_fit", "_next_attempt", "reason")
 
     def __init__(
         self, structure: Structure, *, after_rows: int, memory: float, tolerances: dict[str, float]
@@ -36,6 +41,14 @@ class Learner:
         self._next_attempt = float(after_rows)
         self.estimator: Estimator | None = None
         self.reason = "learning: no model yet; the input must move"
+
+    def to_state(self) -> dict[str, Any]:
+        return super().to_state() | {"estimator": self.estimator.to_state() if self.estimator else None}
+
+    def load_state(self, state: dict[str, Any]) -> None:
+        super().load_state(state)
+        if state["estimator"] is not None:
+            self.estimator = restored_estimator(self._structure, state["estimator"], memory=self._memory)
 
     @property
     def rows(self) -> int:
@@ -93,6 +106,3 @@ def _duration(seconds: float) -> str:
     if seconds < 90.0:
         return f"{seconds:.0f} s"
     return f"{seconds / 60.0:.0f} min" if seconds < 5400.0 else f"{seconds / 3600.0:.1f} h"
-
-
-__all__ = ["INFORMED", "KEPT_ROWS", "Learner"]

@@ -10,6 +10,7 @@ from numpy.typing import NDArray
 from rtid.identify.record import RecordKeeper
 from rtid.identify.structure import Estimator, Fit, Structure
 from rtid.judge.baseline import ill_known
+from rtid.kept import Kept
 
 Array = NDArray[np.float64]
 Mask = NDArray[np.bool_]
@@ -19,11 +20,13 @@ _TRANSIENT = 0.6  # of dead time and five time constants: what the change itself
 _MOST_ROWS = 20_000
 
 
-class Relearning:
+class Relearning(Kept):
     """Collects the rows since a flag and hands out a fresh estimator whenever they carry a better fit.
 
     Rows older than the estimator's `memory` (rows) are left out, so a plant that goes on changing is followed.
     """
+
+    KEPT = ("_keeper", "_rows", "_next", "found")
 
     def __init__(self, structure: Structure, before: Fit, *, memory: float) -> None:
         self._structure = structure

@@ -13,6 +13,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from rtid.judge.threshold import threshold
+from rtid.kept import Kept
 
 Array = NDArray[np.float64]
 
@@ -23,11 +24,16 @@ _FADE = 1e-3  # lets directions fade that have had no news for a long time
 _SHARING = 1.5  # charts of one residual alarm together: their run lengths add up to less
 
 
-class DriftScore:
+class DriftScore(Kept):
     """e and φ come in units of the baseline's noise. (p, p): `covariance` of the baseline, `gamma0`, its mean φφᵀ.
 
     `walk`: variance a row by which the offset may walk; `budget_rows`: mean rows to a false alarm.
     """
+
+    KEPT = (
+        "_null", "_null_covariance", "_score", "_spread", "_power", "_local_noise", "_weight", "_noise",
+        "_statistics",
+    )  # fmt: skip
 
     def __init__(self, covariance: Array, gamma0: Array, *, block_rows: int, budget_rows: float, walk: float) -> None:
         p = len(gamma0)

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
@@ -14,6 +15,7 @@ from rtid.judge.baseline import PROMISED_ROWS, Baseline, Follower
 from rtid.judge.change import Judged, QuantityChange, leader, surest
 from rtid.judge.relearning import Relearning
 from rtid.judge.score import DriftScore
+from rtid.kept import Kept
 from rtid.report import Drift
 from rtid.settings import Loop as LoopSettings
 
@@ -23,15 +25,18 @@ Mask = NDArray[np.bool_]
 _POWER_95 = 7.2  # deviations between the threshold at 1e5 rows and a change seen with 95 % power
 
 
-class Watch:
+class Watch(Kept):
     """One baseline and its detectors."""
+
+    KEPT = (
+        "_follower", "_score", "_rows", "_named", "_hint", "_broken", "_blind_rows", "_told", "_within_rows",
+    )  # fmt: skip
 
     def __init__(
         self, settings: LoopSettings, structure: Structure, baseline: Baseline, follower: Follower, *,
         tolerances: dict[str, float],
     ) -> None:  # fmt: skip
         self.baseline = baseline
-        self.identity = f"{settings.name}-1"
         self._settings = settings
         self._structure = structure
         self._follower = follower
@@ -51,6 +56,15 @@ class Watch:
         self._blind_rows = 0  # rows for which the data could not have shown a change of the tolerance
         self._told = Finding(False)  # what `plant_drift` says
         self._within_rows = 0  # rows for which the named quantity has been back within its tolerance
+
+    def to_state(self) -> dict[str, Any]:
+        return super().to_state() | {"relearning": self._relearning.to_state() if self._relearning else None}
+
+    def load_state(self, state: dict[str, Any]) -> None:
+        super().load_state(state)
+        self._relearning = self._new_relearning() if state["relearning"] is not None else None
+        if self._relearning is not None:
+            self._relearning.load_state(state["relearning"])
 
     @property
     def provisional(self) -> bool:
@@ -119,14 +133,17 @@ class Watch:
     def _relearn(self, estimator: Estimator, inputs: Array, output: Array, ok: Mask) -> Estimator:
         over = self._score.ratio >= 1.0
         if self._relearning is None and over:
-            memory = self._settings.memory_s / self._settings.period_s
-            self._relearning = Relearning(self._structure, self.baseline.fit, memory=memory)
+            self._relearning = self._new_relearning()
         elif self._relearning is not None and not over and self._named is None:
             self._relearning, self._hint = None, "undecided"
         if self._relearning is not None:
             estimator = self._relearning.step(estimator, inputs, output, ok, new_stretch=self._broken)
         self._broken = False
         return estimator
+
+    def _new_relearning(self) -> Relearning:
+        memory = self._settings.memory_s / self._settings.period_s
+        return Relearning(self._structure, self.baseline.fit, memory=memory)
 
     def _decide(self, changes: list[QuantityChange], book: AlarmBook, when: tuple[float, float]) -> None:
         time_s, stamp = when

@@ -13,6 +13,7 @@ CAUTION = (
     "Before you touch the machine: isolate and lock it, wait for stored energy and hot parts, mind automatic restart. "
     "rtid only advises; it is no safety function."
 )
+INVALID = "The estimate met numbers that it cannot go on from; it stands still."
 _LOOK_FIRST = {
     "gain": "Look first at what makes the output weaker or stronger for the same input: friction, fouling, supply, "
     "winding or heater resistance, a leaking or sticking valve.",
@@ -77,6 +78,14 @@ def gap_text(gap_s: float) -> str:
 
 def restart_text() -> str:
     return "The device's clock began anew: it restarted. Rows from before and after are not mixed."
+
+
+def held_text(until_stamp: float, by: str) -> str:
+    return f"held by {by} until {date(until_stamp)}, then it goes on by itself: nothing is learnt or judged until then"
+
+
+def shelved_text(alarm: str, until_stamp: float) -> str:
+    return f"{alarm} is shelved until {date(until_stamp)}, then it is heard again by itself"
 
 
 def stale_text(seconds: float) -> str:

@@ -4,11 +4,13 @@ from __future__ import annotations
 
 from collections import deque
 from dataclasses import dataclass
+from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
 
 from rtid.identify.whitening import autocovariance, autoregression
+from rtid.kept import Kept
 from rtid.model.chi_square import upper_tail
 
 Array = NDArray[np.float64]
@@ -27,7 +29,7 @@ class Validation:
     input_residual_p: float | None = None
 
 
-class RecentRows:
+class RecentRows(Kept):
     """The newest rows with the errors that the estimate made before it learnt from them."""
 
     def __init__(self, rows: int, block_rows: int) -> None:
@@ -36,6 +38,13 @@ class RecentRows:
     def add(self, *, one_step: Array, free_run: Array, output: Array, drive: Array) -> None:
         """One block, each (m,)."""
         self._blocks.append((one_step, free_run, output, drive))
+
+    def to_state(self) -> dict[str, Any]:
+        return {"blocks": list(self._blocks)}
+
+    def load_state(self, state: dict[str, Any]) -> None:
+        self._blocks.clear()
+        self._blocks.extend(state["blocks"])
 
     def validate(self) -> Validation:
         if sum(len(block[0]) for block in self._blocks) < _LEAST_ROWS:
