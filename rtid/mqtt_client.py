@@ -81,16 +81,20 @@ def _encrypt(client: Client, tls: Tls) -> None:
 def why_unreachable(broker: Broker) -> str:
     """What kept the client from connecting, in one line. Only of use inside `on_connect_fail`."""
     error = sys.exc_info()[1]  # paho calls back while it handles the error
-    text = f"the broker at {broker.host}:{broker.port} cannot be reached ({error}); trying again"
+    text = f"the broker at {broker.address} cannot be reached ({error}); trying again"
     return f"{text}. Is the clock of this computer set?" if "not yet valid" in str(error) else text
+
+
+def why_refused(broker: Broker, reason: ReasonCode) -> str:
+    return f"the broker at {broker.address} refuses the connection: {reason}"
 
 
 def why_disconnected(broker: Broker, reason: ReasonCode) -> str:
     """Why a connection ended, in one line. Not every broker says that another client took it over: some just close."""
-    address = f"{broker.host}:{broker.port}"
     if reason.value == SESSION_TAKEN_OVER:
-        return f"another client with the same client id took over the connection to {address}: give each node its name"
+        taken = f"another client with the same client id took over the connection to {broker.address}"
+        return f"{taken}: give each node its name"
     if reason.value == UNSPECIFIED:
         causes = "the broker stopped, the network failed, or another client has the same client id"
-        return f"the connection to the broker at {address} was lost: {causes}"
-    return f"the connection to the broker at {address} ended ({reason})"
+        return f"the connection to the broker at {broker.address} was lost: {causes}"
+    return f"the connection to the broker at {broker.address} ended ({reason})"

@@ -119,6 +119,10 @@ class Broker:
     password_file: str | None = None
     tls: Tls | None = None
 
+    @property
+    def address(self) -> str:
+        return f"{self.host}:{self.port}"
+
 
 @dataclass(frozen=True, slots=True)
 class Model:

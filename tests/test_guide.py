@@ -6,7 +6,6 @@ import argparse
 import importlib
 import re
 import textwrap
-from collections.abc import Iterator
 from pathlib import Path
 from typing import Any
 
@@ -15,19 +14,14 @@ import pytest
 from rtid import config, schemas
 from rtid.cli.guide import TOPICS, page
 from rtid.cli.main import COMMANDS, Parser, main
+from tests.support.schema_parts import parts
 
 README = (Path(__file__).parents[1] / "README.md").read_text(encoding="utf-8")
 
 
-def keys(schema: Any) -> Iterator[str]:
+def keys(schema: Any) -> set[str]:
     """Every key that a JSON Schema names, at any depth."""
-    if isinstance(schema, dict):
-        yield from schema.get("properties", {})
-        for below in schema.values():
-            yield from keys(below)
-    elif isinstance(schema, list):
-        for below in schema:
-            yield from keys(below)
+    return {key for part in parts(schema) for key in part.get("properties", {})}
 
 
 def named(text: str) -> set[str]:
@@ -79,7 +73,7 @@ def test_an_unknown_topic_gets_the_nearest_one(capsys: pytest.CaptureFixture[str
 
 
 def test_every_key_of_the_configuration_is_explained() -> None:
-    known = set(keys(schemas.load("configuration")))
+    known = keys(schemas.load("configuration"))
     assert {"node", "period_s", "memory_s", "password_file"} <= known
     assert known - named(page("configuration")) == set()
 
@@ -102,7 +96,7 @@ def test_no_option_is_explained_that_does_not_exist(command: str) -> None:
 
 @pytest.mark.parametrize("name", sorted(set(schemas.names()) - {"configuration", "summary"}))
 def test_every_field_that_is_published_is_explained(name: str) -> None:
-    published = set(keys(schemas.load(name)))
+    published = keys(schemas.load(name))
     assert len(published) > 3
     assert published - named(page("topics")) == set()
 

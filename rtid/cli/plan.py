@@ -21,7 +21,7 @@ def plan(node: Node) -> dict[str, Any]:
         "schema": "rtid/check/1",
         "node": node.name,
         "state_dir": node.state_dir,
-        "broker": None if node.broker is None else f"{node.broker.host}:{node.broker.port}",
+        "broker": None if node.broker is None else node.broker.address,
         "publish_every_s": node.publish_every_s,
         "sources": {name: _source(source) for name, source in node.sources.items()},
         "loops": {name: _loop(node, loop) for name, loop in node.loops.items()},

@@ -72,9 +72,9 @@ class MqttIntake(LiveSource):
         _userdata, _flags, reason, _properties = details
         self._thread = threading.current_thread()
         if reason.is_failure:
-            self._say(logging.ERROR, f"the broker at {self._address} refuses the connection: {reason}")
+            self._say(logging.ERROR, mqtt_client.why_refused(self._broker, reason))
             return
-        self._note_connected(f"connected to the broker at {self._address}")
+        self._note_connected(f"connected to the broker at {self._broker.address}")
         client.subscribe(self._feed.topic, self._feed.qos)
 
     def _on_connect_fail(self, *_: Any) -> None:
@@ -102,10 +102,6 @@ class MqttIntake(LiveSource):
         if self._delivery.wanted(message.topic):
             self._skew.note(message.topic, arrival)
         self._delivery.take(bytes(message.payload), arrival=arrival, topic=message.topic)
-
-    @property
-    def _address(self) -> str:
-        return f"{self._broker.host}:{self._broker.port}"
 
 
 def _one_topic(filter_: str | None) -> str | None:

@@ -49,7 +49,6 @@ class MqttPublisher:
         self._broker = broker
         self._node = node
         self._root = f"{broker.prefix}/{node}"
-        self._address = f"{broker.host}:{broker.port}"
         self._outbox = Outbox()
         self._counts = PublishCounts()
         self._connected = False
@@ -154,13 +153,13 @@ class MqttPublisher:
     def _on_connect(self, client: Client, *details: Any) -> None:
         _data, _flags, reason, _properties = details
         if reason.is_failure:
-            self._complain(f"the broker at {self._address} refuses the connection: {reason}")
+            self._complain(mqtt_client.why_refused(self._broker, reason))
             return
         self._complaint = ""
         self._counts.connections += 1
         self._connected = True
         self._greeting_id = client.publish(self._status_topic, self._greeting, qos=1, retain=True).mid
-        log.info("connected to the broker at %s", self._address)
+        log.info("connected to the broker at %s", self._broker.address)
 
     def _on_connect_fail(self, *_: Any) -> None:
         self._complain(mqtt_client.why_unreachable(self._broker))
@@ -176,7 +175,7 @@ class MqttPublisher:
         _client, _data, message_id, reason, _properties = details
         if reason.is_failure:
             self._counts.failed += 1
-            self._complain(f"the broker at {self._address} refuses a message ({reason}); mend its access list")
+            self._complain(f"the broker at {self._broker.address} refuses a message ({reason}); mend its access list")
         else:
             self._counts.sent += 1
         if message_id == self._greeting_id:
