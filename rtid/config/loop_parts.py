@@ -24,6 +24,8 @@ from rtid.valid_names import one_of
 
 STRUCTURES: tuple[Structure, ...] = ("output_error", "equation_error")
 PRIORITIES: tuple[Priority, ...] = get_args(Priority)
+WIDEST_PERIODS = 1000  # from the least dead time to the most: computing time grows with it
+LONGEST_PERIODS = 10_000  # dead time: half of the rows that a baseline is learnt from
 _PERCENT = number("a percentage", above=0, most=1000)
 _COUNT = number(above=0, most=1e6)
 _SPAN = number(above=0)
@@ -63,7 +65,7 @@ def model(entry: Entry, period_s: float) -> Model:
         "structure": choice(STRUCTURES),
         "order": choice((1, 2)),
         "integrating": FLAG,
-        "dead_time_s": _dead_time,
+        "dead_time_s": lambda below: _dead_time(below, period_s),
     }
     return Model(**{"dead_time_s": (0.0, 10 * period_s), **Section(entry, kinds).values(kinds)})
 
@@ -87,8 +89,19 @@ def alarms(entry: Entry) -> dict[str, AlarmSetting]:
     return settings
 
 
-def _dead_time(entry: Entry) -> Range:
-    """A known dead time, or the least and the most."""
+def _dead_time(entry: Entry, period_s: float) -> Range:
+    """A known dead time, or the least and the most; within what can be computed and learnt."""
+    least, most = _dead_time_ends(entry)
+    if (most - least) / period_s > WIDEST_PERIODS:
+        found = f"found a range of {(most - least) / period_s:.0f} periods"
+        entry.refuse(f"{found}; expected at most {WIDEST_PERIODS}: narrow it or take a longer period_s")
+    if most / period_s > LONGEST_PERIODS:
+        found = f"found a dead time of {most / period_s:.0f} periods"
+        entry.refuse(f"{found}; expected at most {LONGEST_PERIODS}: take a longer period_s")
+    return least, most
+
+
+def _dead_time_ends(entry: Entry) -> Range:
     if not isinstance(entry.item.content, tuple):
         known = seconds()(entry)
         return known, known

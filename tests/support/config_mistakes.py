@@ -277,6 +277,16 @@ LOOPS = [
         "22: loops.belt.model.dead_time_s: found [2, 1]; expected two numbers,",
         seen=False,
     ),
+    in_loop(
+        "model: {dead_time_s: [1, 11.1]}",
+        "22: loops.belt.model.dead_time_s: found a range of 1010 periods; expected at most 1000: narrow it",
+        seen=False,
+    ),
+    in_loop(
+        "model: {dead_time_s: 101}",
+        "22: loops.belt.model.dead_time_s: found a dead time of 10100 periods; expected at most 10000: take",
+        seen=False,
+    ),
     in_loop("model: {dead_time_s: [-1, 1]}", "22: loops.belt.model.dead_time_s: found -1 s; expected dead times of"),
     in_loop("baseline: {after_s: -1}", "22: loops.belt.baseline.after_s: found the number -1; expected a number of"),
     in_loop("tolerance: {gain: 5}", "(nearest valid name 'gain_pct')"),

@@ -78,12 +78,14 @@ controllers = st.builds(
     input_span=st.none() | positive,
     output_span=st.none() | positive,
 )
-models = st.builds(
-    Model,
-    structure=st.sampled_from(["output_error", "equation_error"]),
-    order=st.sampled_from([1, 2]),
-    dead_time_s=st.tuples(waits, waits).map(lambda pair: (min(pair), max(pair))),
-)
+
+
+@st.composite
+def models(draw: st.DrawFn, period_s: float) -> Model:
+    least = draw(st.floats(0, 9000)) * period_s
+    structure: Any = draw(st.sampled_from(["output_error", "equation_error"]))
+    most = least + draw(st.floats(0, 999)) * period_s
+    return Model(structure, order=draw(st.sampled_from([1, 2])), dead_time_s=(least, most))
 
 
 @st.composite
@@ -158,7 +160,7 @@ def loops(draw: st.DrawFn, name: str, source: Source, every_s: float) -> Loop:
         inputs=(first,),
         output=second,
         period_s=period_s,
-        model=draw(models),
+        model=draw(models(period_s)),
         memory_s=draw(st.floats(period_s, 1e9)),
         stale_after_s=draw(st.floats(period_s, 1e9)),
         baseline=Baseline(draw(flags), draw(waits)),
