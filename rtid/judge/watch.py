@@ -22,6 +22,7 @@ from rtid.settings import Loop as LoopSettings
 Array = NDArray[np.float64]
 Mask = NDArray[np.bool_]
 
+_RETURN = 0.7  # of the threshold: deadband of a flagged change
 _POWER_95 = 7.2  # deviations between the threshold at 1e5 rows and a change seen with 95 % power
 
 
@@ -131,10 +132,10 @@ class Watch(Kept):
         return 100.0 * _POWER_95 * math.sqrt(variance) if math.isfinite(variance) else None
 
     def _relearn(self, estimator: Estimator, inputs: Array, output: Array, ok: Mask) -> Estimator:
-        over = self._score.ratio >= 1.0
-        if self._relearning is None and over:
+        ratio = self._score.ratio
+        if self._relearning is None and ratio >= 1.0:
             self._relearning = self._new_relearning()
-        elif self._relearning is not None and not over and self._named is None:
+        elif self._relearning is not None and ratio < _RETURN and self._named is None:
             self._relearning, self._hint = None, "undecided"
         if self._relearning is not None:
             estimator = self._relearning.step(estimator, inputs, output, ok, new_stretch=self._broken)
