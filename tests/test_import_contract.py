@@ -36,6 +36,8 @@ def test_the_rooms_keep_the_contract() -> None:
     [
         ("identify/__init__.py", "import time", "The pure rooms know no clock"),
         ("loop.py", "import yaml", "The pure rooms know no clock"),
+        ("knowledge.py", "import rtid.loop", "Nothing runs back"),
+        ("kept.py", "import rtid.judge", "The ground floor imports no room"),
         ("identify/__init__.py", "import rtid.rows", "The estimation mathematics and the simulated plants stand alone"),
         ("judge/__init__.py", "import rtid.model", "Nothing runs back"),
         ("intake/__init__.py", "import rtid.publish", "Nothing runs back"),
