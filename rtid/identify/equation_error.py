@@ -21,6 +21,7 @@ Array = NDArray[np.float64]
 Mask = NDArray[np.bool_]
 
 MIN_ROWS = 200
+_FAR = 1e6
 START_ERROR = 0.2  # standard error of ln|gain| at which an estimate is worth publishing
 
 
@@ -116,9 +117,15 @@ class EquationError:
             fit.delay,
         )
 
+    def _prior(self, record: Record) -> Array:
+        """Prior deviation of every parameter, in its own units: far beyond anything that a record can show."""
+        output = _size(record.output[np.isfinite(record.output)])
+        drive = output / _size(record.inputs[:, 0])
+        return _FAR * np.array([1.0] * self.order + [drive] * self.order + [output])
+
     def _stack(self, record: Record) -> tuple[LeastSquaresStack, Regressors]:
         regressors = Regressors(self.order, self.delays)
-        stack = LeastSquaresStack(len(self.delays), regressors.p)
+        stack = LeastSquaresStack(len(self.delays), self._prior(record))
         ends = (*record.starts[1:], len(record))
         for start, end in zip(record.starts, ends, strict=True):
             regressors.break_off()
@@ -225,10 +232,10 @@ class BankEstimator(Kept):
         best = self._structure.delays.index(fit.delay)
         inverse = self._stack.inverse(best)
         covariance = fit.sigma**2 * inverse @ self._squares[best] @ inverse
-        if np.isfinite(fit.theta).all() and np.isfinite(covariance).all():
+        spread = np.diag(covariance)
+        self.invalid = not (np.isfinite(fit.theta).all() and np.isfinite(covariance).all() and (spread >= 0.0).all())
+        if not self.invalid:
             self._fit = replace(fit, covariance=covariance)
-        else:
-            self.invalid = True
 
 
 def _log_gain_error(fit: Fit, order: int) -> float:
@@ -238,6 +245,12 @@ def _log_gain_error(fit: Fit, order: int) -> float:
         return math.inf
     slope = np.concatenate((np.full(order, -1.0 / at_one), np.full(order, 1.0 / total), [0.0]))
     return float(np.sqrt(slope @ fit.covariance @ slope))
+
+
+def _size(values: Array) -> float:
+    """Root mean square, 1 for nothing but zeros."""
+    size = float(np.sqrt(np.mean(values**2))) if len(values) else 0.0
+    return size if size > 0.0 else 1.0
 
 
 def _square(triangle: Array) -> Array:

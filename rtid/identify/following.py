@@ -30,6 +30,7 @@ Array = NDArray[np.float64]
 Mask = NDArray[np.bool_]
 
 _LOG_STEP = 0.3
+_SWELL = 1.5  # of the usual deviation: a residual that swells more shows a change of the plant and not the noise
 _RENEW_EVERY = 8  # blocks between two noise models
 
 
@@ -53,6 +54,7 @@ class FollowingEstimator(Kept):
         self._prior[-1] = max(self._spread, 1e-9)
         self._covariance = fit.covariance[np.ix_(self._free, self._free)]
         self._forgetting = self._start_information()
+        ok[: min(plant.settling_rows(fit.theta), len(ok) // 2)] = False  # what came before the record dies down there
         e, _, good = self._start_whitening(residual, psi, ok)
         self._noise = RunningAutocovariance(autocovariance(residual, ok))
         self._leftover = RunningAutocovariance(autocovariance(e, good, LONG_RUN_LAGS))
@@ -99,25 +101,35 @@ class FollowingEstimator(Kept):
             return
         sigma = self._fit.sigma
         scaled, unit = phi / sigma, np.clip(e / sigma, -HUBER, HUBER)
-        self._forgetting.forget(float(np.exp(-len(e) / self._memory)))
-        self._walk(len(e))
+        before = self._forgetting.to_state(), self._covariance
+        try:
+            step = self._update(scaled, unit)
+            self.invalid = not (np.isfinite(step).all() and np.isfinite(self._covariance).all())
+        except np.linalg.LinAlgError:
+            self.invalid = True
+        if self.invalid:
+            self._forgetting.load_state(before[0])
+            self._covariance = before[1]
+        else:
+            self._move(step, last_psi)
+
+    def _update(self, scaled: Array, unit: Array) -> Array:
+        """Information and covariance with the rows φ (m, p) and residuals (m,), in units of the noise; the step."""
+        self._forgetting.forget(float(np.exp(-len(unit) / self._memory)))
+        self._walk(len(unit))
         gained = self._forgetting.add(scaled)
         gain = np.linalg.inv(self._forgetting.information)
-        step = self._limited(gain @ (scaled.T @ unit))
-        keep = np.eye(len(step)) - gain @ gained
+        keep = np.eye(len(gain)) - gain @ gained
         understated = long_run_ratio(self._leftover.covariance)
-        covariance = keep @ self._covariance @ keep.T + understated * (gain @ gained @ gain)
-        if not (np.isfinite(step).all() and np.isfinite(covariance).all()):
-            self.invalid = True
-            return
-        self._covariance = covariance
-        self._move(step, last_psi)
+        self._covariance = keep @ self._covariance @ keep.T + understated * (gain @ gained @ gain)
+        return self._limited(np.asarray(gain @ (scaled.T @ unit)))
 
     def _walk(self, rows: int) -> None:
         """The offset is loose: an unmeasured load must not be read as gain."""
         slowest = self._plant.time_constants(self._fit.theta)[0]
         variance = 1e-4 * self._spread**2 * min(1.0, self._plant.period / slowest) ** 2 * rows
         self._forgetting.loosen(len(self._free) - 1, variance)
+        self._covariance = self._covariance.copy()
         self._covariance[-1, -1] += variance
 
     def _limited(self, step: Array) -> Array:
@@ -142,8 +154,10 @@ class FollowingEstimator(Kept):
 
     def _learn_noise(self, residual: Array, e: Array, rows: float) -> None:
         keep = float(np.exp(-rows / self._memory))
-        bound = 4.0 * float(np.sqrt(self._noise.covariance[0])) + self._floor
-        self._noise.add(np.clip(residual, -bound, bound), keep=keep, rows=rows)
+        usual = float(np.sqrt(self._noise.covariance[0])) + self._floor
+        present = float(np.sqrt(residual @ residual / rows))
+        tamed = np.clip(residual, -4.0 * usual, 4.0 * usual) * min(1.0, _SWELL * usual / max(present, 1e-300))
+        self._noise.add(tamed, keep=keep, rows=rows)
         clipped = np.clip(e, -HUBER * self._fit.sigma, HUBER * self._fit.sigma)
         self._leftover.add(clipped, keep=keep, rows=rows)
         self._weight = min(self._memory, self._weight + rows)

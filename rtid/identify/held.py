@@ -108,7 +108,7 @@ def _decay(order: int, shape: tuple[float, ...], t: float) -> _Decay:
     c, s = _damped_cosine_sine(w, z, t)
     slope = -w * w * s
     r2 = w * w - a * a
-    bend = (t * c - s) / r2 if abs(r2) * t * t > _NEAR_CRITICAL else -(t**3) / 3.0 * math.exp(-a * t)
+    bend = (t * c - s) / r2 if abs(r2) * t * t > 1.0 else _bend(r2, t) * math.exp(-a * t)
     return _Decay(c + a * s, slope, (t * slope, -a * w * w * bend))
 
 
@@ -116,13 +116,22 @@ def _damped_cosine_sine(w: float, z: float, t: float) -> tuple[float, float]:
     """e^(-at)·cos(rt) and e^(-at)·sin(rt)/r, with cosh and sinh where overdamped, without overflow."""
     a = z * w
     r2 = w * w - a * a
+    e = math.exp(-a * t)
     if abs(r2) * t * t < _NEAR_CRITICAL:
-        e = math.exp(-a * t)
         return e * (1.0 - r2 * t * t / 2.0), e * t * (1.0 - r2 * t * t / 6.0)
+    r = math.sqrt(abs(r2))
     if r2 > 0.0:
-        r = math.sqrt(r2)
-        e = math.exp(-a * t)
         return e * math.cos(r * t), e * math.sin(r * t) / r
-    r = math.sqrt(-r2)
+    if r * abs(t) < 1.0:
+        return e * math.cosh(r * t), e * math.sinh(r * t) / r
     slow, fast = math.exp(-(a - r) * t), math.exp(-(a + r) * t)
     return 0.5 * (slow + fast), 0.5 * (slow - fast) / r
+
+
+def _bend(r2: float, t: float) -> float:
+    """(t cos(rt) - sin(rt)/r)/r² by its power series, for |r²|t² below 1."""
+    term, total = -(t**3) / 3.0, 0.0
+    for k in range(1, 10):
+        total += term
+        term *= -r2 * t * t * (k + 1.0) / (k * (2.0 * k + 2.0) * (2.0 * k + 3.0))
+    return total

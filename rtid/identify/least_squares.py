@@ -16,14 +16,14 @@ Array = NDArray[np.float64]
 
 
 class LeastSquaresStack(Kept):
-    """c models with p parameters each. `deviation`: prior standard deviation of every parameter around zero."""
+    """c models with p parameters each. `deviation`: (p,) prior standard deviations around zero."""
 
     KEPT = ("triangle", "weight")
 
-    def __init__(self, candidates: int, parameters: int, *, deviation: float = 1e6) -> None:
-        self.p = parameters
-        self.triangle = np.zeros((candidates, parameters + 1, parameters + 1))
-        self.triangle[:, range(parameters), range(parameters)] = 1.0 / deviation
+    def __init__(self, candidates: int, deviation: Array) -> None:
+        self.p = len(deviation)
+        self.triangle = np.zeros((candidates, self.p + 1, self.p + 1))
+        self.triangle[:, range(self.p), range(self.p)] = 1.0 / deviation
         self.weight = 0.0  # sum of the rows' present weights
 
     def fold(self, regressors: Array, output: Array, *, factor: float = 1.0) -> None:

@@ -81,7 +81,7 @@ class OutputError:
             return None
         part = RecordFit(self._plant, liveliest_part(record))
         found = best([part.polish(start, rounds=3) for start in starts])
-        return RecordFit(self._plant, record).polish(found.fit)
+        return RecordFit(self._plant, record).polish(self._leave_local_minima(part, found).fit)
 
     def _leave_local_minima(self, whole: RecordFit, point: Point) -> Point:
         if not self._plant.free[-2]:

@@ -30,6 +30,7 @@ class AlarmEntry:
 
     pending_since: float | None = None  # data time at which the condition began or ended and still waits for its delay
     active: ActiveAlarm | None = None
+    raised: bool = False  # it has been heard of
     acknowledged: bool = False
     clear: bool = True  # the condition is absent though the alarm may be latched
     last: Finding = Finding(False)
@@ -69,7 +70,7 @@ class AlarmBook(Kept):
     def acknowledge(self, alarm: str, *, time_s: float, stamp: float, by: str, signal: str | None = None) -> bool:
         """False when there is nothing to acknowledge."""
         entry = self._entries.get((alarm, signal))
-        if entry is None or entry.acknowledged:
+        if entry is None or entry.acknowledged or not entry.raised:
             return False
         entry.acknowledged = True
         retain = entry.active is not None and not entry.clear
@@ -153,7 +154,7 @@ class AlarmBook(Kept):
         entry.pending_since = time_s if entry.pending_since is None else entry.pending_since
         setting = self._settings[key[0]]
         if time_s - entry.pending_since >= setting.on_delay_s:
-            entry.pending_since, entry.clear, entry.acknowledged = None, False, False
+            entry.pending_since, entry.clear, entry.acknowledged, entry.raised = None, False, False, True
             entry.active = ActiveAlarm(key[0], setting.priority, stamp, finding.text, key[1], finding.quantity)
             self._emit(key, entry, "active", finding, time_s, stamp)
 

@@ -24,6 +24,9 @@ _BY_ALARM: dict[str, Health] = {
     "saturated": "out_of_specification",
     "outliers": "out_of_specification",
     "timing": "out_of_specification",
+    "data_gap": "function_check",
+    "storage": "maintenance_required",
+    "clock": "maintenance_required",
 }
 _ORDER: tuple[Health, ...] = ("failure", "function_check", "out_of_specification", "maintenance_required")
 

@@ -46,7 +46,8 @@ class DriftScore(Kept):
         self._gamma0 = gamma0
         self._walk = walk
         self._score = np.zeros((len(MEMORIES), p))
-        self._spread = np.zeros((len(MEMORIES), p, p))
+        kept = 1.0 - np.exp(-2.0 * self._rates)
+        self._spread = gamma0 / kept[:, None, None]  # as after long watching: the thresholds count on a start at zero
         self._power = np.zeros((p, p))  # Σλᵏφφᵀ of the longest memory
         self._local_noise = 1.0
         self._weight = 0.0

@@ -125,7 +125,9 @@ class Watch(Kept):
         return 100.0 * _POWER_95 * math.sqrt(variance)
 
     def _detectable_by_inverse(self, power: Array, known: Array, gradient: Array, horizon: float) -> float | None:
-        size = np.sqrt(np.maximum(np.diag(power), 1e-300))
+        size = np.sqrt(np.diag(power))
+        if not (size > 0.0).all():
+            return None
         unit = power / np.outer(size, size) + 1e-9 * np.eye(len(size))
         g = gradient / size
         variance = float(g @ np.linalg.solve(unit, g)) / horizon + float(gradient @ known @ gradient)

@@ -13,6 +13,7 @@ Array = NDArray[np.float64]
 
 LARGEST_DEVIATION = 0.15  # of the final value: beyond, no first-order form describes the response
 _ROWS = 20_000
+_SLOWEST_POLE = 0.9997  # settles within those rows
 
 
 @dataclass(frozen=True, slots=True)
@@ -28,6 +29,8 @@ def reduced(numerator: Array, denominator: Array, *, delay: float, period: float
     Starts from the two-point method (28.3 % and 63.2 %). None where the response has no end within 20 000 rows or the
     largest deviation is above 0.15 of it.
     """
+    if np.max(np.abs(np.roots(denominator)), initial=0.0) > _SLOWEST_POLE or numerator.sum() == 0.0:
+        return None
     response = unit_step(numerator, denominator)
     gain = float(numerator.sum() / denominator.sum())
     shape = response / gain
