@@ -8,6 +8,7 @@ import signal
 from rtid import config
 from rtid.cli import logs
 from rtid.cli.arguments import Subparsers, add_command, add_config
+from rtid.service.notify import Notifier
 from rtid.service.service import Service
 
 
@@ -22,7 +23,7 @@ def add(subparsers: Subparsers) -> None:
 
 
 def run(args: argparse.Namespace) -> int:
-    service = Service(config.load(args.config))
+    service = Service(config.load(args.config), notifier=Notifier())
     logs.start(tracebacks=args.debug)
     for number in (signal.SIGTERM, signal.SIGINT):
         signal.signal(number, lambda *_: service.stop())

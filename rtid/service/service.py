@@ -22,6 +22,7 @@ from rtid.publish.mqtt import MqttPublisher
 from rtid.service import state_dir
 from rtid.service.complaints import Complaints
 from rtid.service.intakes import Intake, make_intake, origin
+from rtid.service.notify import Notifier, in_words
 from rtid.service.outlets import Observer, Outlets
 from rtid.service.pipeline import Pipeline
 from rtid.service.silence import SilenceWatch
@@ -40,9 +41,10 @@ class Service:
     Everything is made in `run`, so a Service that never ran has touched nothing.
     """
 
-    def __init__(self, node: Node, *, observers: Sequence[Observer] = ()) -> None:
+    def __init__(self, node: Node, *, observers: Sequence[Observer] = (), notifier: Notifier | None = None) -> None:
         self._node = node
         self._observers = tuple(observers)
+        self._notifier = notifier or Notifier({})
         self._queue = ReadingQueue()
         self._stopping = threading.Event()
         self._pipeline: Pipeline | None = None
@@ -104,11 +106,15 @@ class Service:
         complaints = Complaints({intake.name: intake.counts for intake in intakes})
         for intake in intakes:
             intake.start()
+        self._notifier.ready()
         try:
             while not self._stopping.is_set():
                 self._turn(pipeline, silence)
                 complaints.look(time.monotonic())
+                self._notifier.status(in_words({name: loop.state for name, loop in pipeline.loops.items()}))
+                self._notifier.alive(time.monotonic())
         finally:
+            self._notifier.stopping()
             _stop(intakes)
         self._turn(pipeline, silence)
 
