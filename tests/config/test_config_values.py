@@ -31,7 +31,7 @@ def test_a_slow_loop_is_stale_after_five_periods(tmp_path: Path) -> None:
 
 
 def test_sections_that_name_other_keys_keep_the_period_dependent_defaults(tmp_path: Path) -> None:
-    loop = loop_with("model: {order: 2}\nbaseline: {automatic: false}", tmp_path)
+    loop = loop_with("model: {order: 2}\nbaseline: {automatic: true}", tmp_path)
     assert loop.model.dead_time_s == pytest.approx((0.0, 0.1))
     assert loop.baseline.after_s == pytest.approx(20)
 

@@ -163,7 +163,7 @@ def loops(draw: st.DrawFn, name: str, source: Source, every_s: float) -> Loop:
         model=draw(models(period_s)),
         memory_s=draw(st.floats(period_s, 1e9)),
         stale_after_s=draw(st.floats(period_s, 1e9)),
-        baseline=Baseline(draw(flags), draw(waits)),
+        baseline=Baseline(after_s=draw(waits)),
         active_when=draw(st.none() | gates(sorted(known))),
         tolerance=draw(tolerances),
         alarm_budget=draw(budgets),
