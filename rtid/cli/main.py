@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import argparse
 import importlib
+import logging
 import os
 import sys
 import traceback
@@ -12,6 +13,7 @@ from typing import Any, NoReturn
 
 from rtid import __doc__ as purpose
 from rtid import __version__
+from rtid.cli import logs
 from rtid.errors import RtidError, UsageError
 from rtid.valid_names import one_of
 
@@ -114,9 +116,10 @@ def _explain(error: Exception, *, debug: bool) -> int:
     if debug:
         traceback.print_exception(error)
     text = " ".join(str(error).split())
+    start = logs.severity(logging.ERROR) if logs.in_journal(sys.stderr) else ""
     if isinstance(error, RtidError):
-        print(f"rtid: {text}", file=sys.stderr)
+        print(f"{start}rtid: {text}", file=sys.stderr)
         return error.exit_code
     mend = "" if debug else "; start again with --debug to see where"
-    print(f"rtid: unexpected {type(error).__name__}: {text}{mend}", file=sys.stderr)
+    print(f"{start}rtid: unexpected {type(error).__name__}: {text}{mend}", file=sys.stderr)
     return INTERNAL_ERROR
