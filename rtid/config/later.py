@@ -45,7 +45,7 @@ REFUSED = (
     Refused("loops.*.model.integrating", lambda c: c is True, "integrating: true", "use a loop whose output settles"),
     Refused("loops.*.inputs", _several, "a second input", "give one input"),
     Refused("loops.*.operating_point", _always, "a baseline per region", "remove it, or gate with active_when"),
-    Refused("loops.*.baseline.automatic", lambda c: c is False, "automatic: false", "let it be learnt: automatic: true"),
+    Refused("loops.*.baseline.automatic", lambda c: c is False, "automatic: false", "let it be learnt from the data"),
     Refused("loops.*.baseline.known", _always, "a known baseline", "let it be learnt: automatic: true"),
 )
 
