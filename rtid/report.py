@@ -5,8 +5,9 @@
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from dataclasses import dataclass, field
-from typing import Literal
+from typing import Any, Literal
 
 State = Literal["waiting", "learning", "watching", "held", "stale", "inactive"]
 Health = Literal["good", "maintenance_required", "out_of_specification", "function_check", "failure"]
@@ -56,6 +57,7 @@ class Transition:
     region: str | None = None
     by: str | None = None
     retain: bool = True  # False: back to normal and acknowledged, the retained message is emptied
+    detail: Mapping[str, Any] | None = None  # plain values that belong to one kind of action only
 
 
 @dataclass(frozen=True, slots=True)

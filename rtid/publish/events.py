@@ -7,56 +7,104 @@ import json
 import logging
 import mmap
 import os
-from collections.abc import Iterator, Mapping
+from collections.abc import Iterable, Iterator
 from pathlib import Path
 from typing import Any
 
+from rtid.errors import InputOutputError
 from rtid.publish import messages
 from rtid.publish.files import cannot_create, cannot_write
 from rtid.report import Transition
 
+MOST_UNWRITTEN = 1000  # events in memory while the disk refuses them; older ones are lost
+
 log = logging.getLogger(__name__)
+
+Event = dict[str, Any]
 
 
 class EventLog:
     """Appends to `path` and continues its numbers. A last line without end (power loss) goes to `path` + `.torn`.
 
-    Raises CannotCreate when the file cannot be opened for writing.
+    `sequence` is the last number given, `unwritten` what the disk has not taken yet. Raises CannotCreate when the
+    folder is missing or the file cannot be read; one that cannot be written is told by `write`.
     """
 
     def __init__(self, path: str | os.PathLike[str]) -> None:
         self._path = Path(path)
+        self.unwritten: list[Event] = []
+        self._ends_whole = False
         try:
-            self._path.open("ab").close()
-            self._set_torn_end_aside()
-            self.sequence = self._last_sequence()
+            os.stat(self._path.parent)
+            with contextlib.suppress(InputOutputError):
+                self.write()
+            self.sequence = next((event["sequence"] for event in self._backwards()), 0)
         except OSError as error:
             raise cannot_create(self._path, error) from None
 
-    def append(
-        self, transition: Transition, *, node: str, loop: str, extra: Mapping[str, Any] | None = None
-    ) -> dict[str, Any]:
-        """The event as it was written; `extra` stands under its key `detail`.
-
-        Raises InputOutputError when the disk refuses it: the event keeps its number, and the list has a gap there.
-        """
-        self.sequence += 1
-        event = messages.event(transition, node=node, loop=loop, sequence=self.sequence)
-        if extra is not None:
-            event["detail"] = messages.plain(extra)
-        try:
-            _append(self._path, messages.dump(event) + b"\n")
-        except OSError as error:
-            raise cannot_write(self._path, error) from None
+    def append(self, transition: Transition, *, node: str, loop: str) -> Event:
+        """The event as it was written. Raises InputOutputError when the disk refuses it; it waits in `unwritten`."""
+        event = self.number(transition, node=node, loop=loop)
+        self.write()
         return event
 
-    def _set_torn_end_aside(self) -> None:
-        with self._path.open("r+b") as file, _mapped(file.fileno()) as content:
-            whole = content.rfind(b"\n") + 1
-            torn = content[whole:]
-        if torn:
-            self._keep_torn(torn)
-            os.truncate(self._path, whole)
+    def number(self, transition: Transition, *, node: str, loop: str) -> Event:
+        """The event under the next number; `write` puts it on the disk."""
+        self.sequence += 1
+        event = messages.event(transition, node=node, loop=loop, sequence=self.sequence)
+        self.unwritten.append(event)
+        if len(self.unwritten) > MOST_UNWRITTEN:
+            log.error("event %d is lost: the disk takes none", self.unwritten.pop(0)["sequence"])
+        return event
+
+    def write(self) -> None:
+        """All that is unwritten, in order. Raises InputOutputError when the disk refuses; all of it waits then."""
+        lines = b"".join(messages.dump(event) + b"\n" for event in self.unwritten)
+        try:
+            self._mend_end()
+            _append(self._path, lines)
+        except OSError as error:
+            raise cannot_write(self._path, error) from None
+        self.unwritten.clear()
+
+    def recover(self, events: Iterable[Event], *, last: int) -> None:
+        """Take up events that were numbered before a kill and are not in the list; go on after number `last`."""
+        missing = {event["sequence"]: event for event in events if event["sequence"] > self.sequence}
+        self.unwritten += [missing[number] for number in sorted(missing)]
+        self.sequence = max((self.sequence, last, *missing))
+
+    def after(self, sequence: int) -> list[Event]:
+        """All events with higher numbers, oldest first."""
+        found = []
+        for event in self._backwards():
+            if event["sequence"] <= sequence:
+                break
+            found.append(event)
+        return found[::-1] + [event for event in self.unwritten if event["sequence"] > sequence]
+
+    def latest(self, alarm: str) -> Event | None:
+        """The last event of this alarm in the list, of whatever loop."""
+        needle = messages.dump({"alarm": alarm})[1:-1]
+        try:
+            with self._path.open("rb") as file, _mapped(file.fileno()) as content:
+                place = content.rfind(needle)
+                line = content[content.rfind(b"\n", 0, place) + 1 : content.find(b"\n", place)]
+        except FileNotFoundError:
+            return None
+        return _event(line) if place >= 0 else None
+
+    def _mend_end(self) -> None:
+        """Once: what an earlier process left unfinished."""
+        if self._ends_whole:
+            return
+        with contextlib.suppress(FileNotFoundError):
+            with self._path.open("rb") as file, _mapped(file.fileno()) as content:
+                whole = content.rfind(b"\n") + 1
+                torn = content[whole:]
+            if torn:
+                self._keep_torn(torn)
+                os.truncate(self._path, whole)
+        self._ends_whole = True
 
     def _keep_torn(self, torn: bytes) -> None:
         aside = self._path.with_name(self._path.name + ".torn")
@@ -67,16 +115,16 @@ class EventLog:
         else:
             log.warning("%s: the last line was torn (power loss?) and is set aside in %s", self._path, aside)
 
-    def _last_sequence(self) -> int:
-        with self._path.open("rb") as file, _mapped(file.fileno()) as content:
+    def _backwards(self) -> Iterator[Event]:
+        """The events of the list, newest first; lines that are no events are passed over."""
+        with contextlib.suppress(FileNotFoundError), self._path.open("rb") as file, _mapped(file.fileno()) as content:
             end = len(content)
             while end > 0:
                 start = content.rfind(b"\n", 0, end - 1) + 1
-                sequence = _sequence(content[start:end])
-                if sequence is not None:
-                    return sequence
+                event = _event(content[start:end])
+                if event is not None:
+                    yield event
                 end = start
-        return 0
 
 
 def _append(path: Path, line: bytes) -> None:
@@ -107,10 +155,9 @@ def _mapped(descriptor: int) -> Iterator[bytes | mmap.mmap]:
         yield content
 
 
-def _sequence(line: bytes) -> int | None:
+def _event(line: bytes) -> Event | None:
     try:
         event = json.loads(line)
     except ValueError:
         return None
-    sequence = event.get("sequence") if isinstance(event, dict) else None
-    return sequence if isinstance(sequence, int) else None
+    return event if isinstance(event, dict) and isinstance(event.get("sequence"), int) else None

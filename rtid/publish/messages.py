@@ -108,6 +108,7 @@ def active_alarm(alarm: ActiveAlarm) -> Payload:
 def event(transition: Transition, *, node: str, loop: str, sequence: int) -> Payload:
     """A line of the event list, and the payload of `alarm/<name>`. An action stands as `action` in place of `alarm`."""
     subject = {"action": transition.action} if transition.alarm is None else {"alarm": transition.alarm}
+    detail = {} if transition.detail is None else {"detail": plain(transition.detail)}
     return {
         "schema": "rtid/event/1",
         "sequence": sequence,
@@ -126,7 +127,15 @@ def event(transition: Transition, *, node: str, loop: str, sequence: int) -> Pay
         "region": transition.region,
         "by": transition.by,
         "text": transition.text,
+        **detail,
     }
+
+
+def transition_of(event: Payload) -> Transition:
+    """What `event` was made of, but for `retain`. Raises KeyError or ValueError for what is no event."""
+    names = {field.name for field in dataclasses.fields(Transition)} & event.keys()
+    told = {name: event[name] for name in names} | {"stamp": datetime.fromisoformat(event["time"]).timestamp()}
+    return Transition(**{"alarm": None, "action": None} | told)
 
 
 def snapshot(body: Mapping[str, Any], *, node: str, stamp: float) -> Payload:
