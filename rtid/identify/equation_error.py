@@ -118,10 +118,9 @@ class EquationError:
         )
 
     def _prior(self, record: Record) -> Array:
-        """Prior deviation of every parameter, in its own units: far beyond anything that a record can show."""
-        output = _size(record.output[np.isfinite(record.output)])
-        drive = output / _size(record.inputs[:, 0])
-        return _FAR * np.array([1.0] * self.order + [drive] * self.order + [output])
+        """Prior deviation of every parameter, per unit of output: far beyond anything that a record can show."""
+        output, drive = _size(record.output[np.isfinite(record.output)]), _size(record.inputs[:, 0])
+        return _FAR * np.array([1.0 / output] * self.order + [1.0 / drive] * self.order + [1.0])
 
     def _stack(self, record: Record) -> tuple[LeastSquaresStack, Regressors]:
         regressors = Regressors(self.order, self.delays)

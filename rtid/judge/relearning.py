@@ -52,8 +52,9 @@ class Relearning(Kept):
 
     def _fit(self, estimator: Estimator) -> Estimator:
         record = self._keeper.record()
-        fits = [self._structure.refit(record, start, moving=True) for start in (self._before, estimator.fit)]
-        fit = min(fits, key=lambda f: f.sigma)
+        fresh = self._structure.first_fit(record)
+        starts = [self._before, estimator.fit, *([fresh] if fresh is not None else [])]
+        fit = min((self._structure.refit(record, start, moving=True) for start in starts), key=lambda f: f.sigma)
         if ill_known(self._structure, fit) is not None:
             return estimator
         self.found = True
