@@ -81,7 +81,7 @@ class Outlets:
 
 def _storage(failure: str) -> Transition:
     now = time.time()
-    text = f"events are not stored: {failure}" if failure else "events are stored again; those in between are missing"
+    text = f"events are not stored: {failure}" if failure else "events are stored again, those that waited too"
     return Transition(
         alarm="storage",
         transition="active" if failure else "cleared",

@@ -27,6 +27,7 @@ from rtid.service.outlets import Observer, Outlets
 from rtid.service.pipeline import Pipeline
 from rtid.service.silence import SilenceWatch
 from rtid.settings import Node
+from rtid.valid_names import one_of
 
 WAIT_S = 0.25  # longest wait for a reading: how late a stop or a silence is noticed
 ANSWER_S = 5.0  # longest wait for the worker's answer
@@ -78,7 +79,7 @@ class Service:
     def snapshot(self, loop: str, reason: str) -> dict[str, Any]:
         """The model of now, taken by the worker between two readings. Raises UsageError, Unavailable."""
         if loop not in self._node.loops:
-            raise UsageError(f"no loop {loop!r}; the loops are: {', '.join(self._node.loops)}")
+            raise UsageError(f"no loop {loop!r}; expected {one_of(loop, self._node.loops)}")
         return self._ask(
             lambda pipeline: messages.snapshot(
                 pipeline.loops[loop].snapshot(reason), node=self._node.name, stamp=time.time()
