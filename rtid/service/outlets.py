@@ -52,6 +52,10 @@ class Outlets:
         if self._publisher is not None:
             self._publisher.report(report)
 
+    def snapshot(self, payload: dict[str, Any], loop: str) -> None:
+        if self._publisher is not None:
+            self._publisher.snapshot(payload, loop)
+
     def _watch_storage(self) -> None:
         """The node's alarm `storage` stands while events cannot be written."""
         if bool(self._failure) == self._alarmed:

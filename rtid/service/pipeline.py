@@ -5,6 +5,7 @@ from __future__ import annotations
 from collections.abc import Callable, Iterable, Mapping
 
 from rtid import settings
+from rtid.actions import Action
 from rtid.intake.grid import Grid
 from rtid.intake.reading import Reading
 from rtid.loop import Loop
@@ -15,7 +16,7 @@ from rtid.rows import Rows
 class Pipeline:
     """The grids and loops of one node; every report goes to `deliver`, in the order in which it came about.
 
-    `rows` counts the grid rows over all loops. Not safe for threads: one worker owns it.
+    `rows` counts the grid rows over all loops, `blocks` the blocks of each. Not safe for threads: one worker owns it.
     `stamp` is a label in seconds since 1970.
     """
 
@@ -23,6 +24,7 @@ class Pipeline:
         self.loops = {name: Loop(loop) for name, loop in told.items()}
         self.grids = {name: Grid(loop) for name, loop in told.items()}
         self.rows = 0
+        self.blocks = dict.fromkeys(told, 0)
         self._deliver = deliver
         self._wanted = {name: frozenset(loop.signals) for name, loop in told.items()}
 
@@ -44,6 +46,12 @@ class Pipeline:
         if report is not None:
             self._deliver(report)
 
+    def act(self, name: str, action: Action, *, silent_s: float, stamp: float) -> Report:
+        """A person's action on a loop, `silent_s` after its last reading. Raises ActionRefused."""
+        report = self.loops[name].act(action, stamp, silent_s=silent_s)
+        self._deliver(report)
+        return report
+
     def report(self, name: str, stamp: float) -> Report:
         """The latest report of a loop; before its first reading one that says so, and that is due."""
         return self.loops[name].report or Report(
@@ -61,4 +69,5 @@ class Pipeline:
     def _advance(self, name: str, blocks: Iterable[Rows]) -> None:
         for rows in blocks:
             self.rows += len(rows.values)
+            self.blocks[name] += 1
             self._deliver(self.loops[name].advance(rows))

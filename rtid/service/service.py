@@ -21,16 +21,20 @@ from rtid.publish.events import EventLog
 from rtid.publish.mqtt import MqttPublisher
 from rtid.service import state_dir
 from rtid.service.complaints import Complaints
+from rtid.service.control import ControlServer
+from rtid.service.control_socket import socket_path
+from rtid.service.desk import Desk
 from rtid.service.intakes import Intake, make_intake, origin
 from rtid.service.notify import Notifier, in_words
 from rtid.service.outlets import Observer, Outlets
 from rtid.service.pipeline import Pipeline
 from rtid.service.silence import SilenceWatch
+from rtid.service.status import Board
 from rtid.settings import Node
 from rtid.valid_names import one_of
 
 WAIT_S = 0.25  # longest wait for a reading: how late a stop or a silence is noticed
-ANSWER_S = 5.0  # longest wait for the worker's answer
+ANSWER_S = 20.0  # longest wait for the worker's answer: the fit of a baseline may take seconds on a small board
 GOODBYE_S = 2.0  # longest wait for the sources to close
 
 log = logging.getLogger("rtid.service")
@@ -54,9 +58,8 @@ class Service:
         """Serve. Raises CannotCreate or Unavailable when the state directory cannot be had."""
         with state_dir.held(self._node.state_dir) as folder:
             publisher = self._make_publisher()
-            outlets = Outlets(
-                self._node.name, EventLog(folder / "events.jsonl"), publisher=publisher, observers=self._observers
-            )
+            events = EventLog(folder / "events.jsonl")
+            outlets = Outlets(self._node.name, events, publisher=publisher, observers=self._observers)
             self._pipeline = Pipeline(self._node.loops, outlets.deliver)
             intakes = self._make_intakes()
             self._say_start(folder)
@@ -64,8 +67,13 @@ class Service:
                 publisher.start(messages.status(self._node.name, stamp=time.time(), loops=self._node.loops))
             for name in self._node.loops:  # what the broker kept of the last run is not true any more
                 outlets.publish(self._pipeline.report(name, time.time()))
+            now = time.monotonic()
+            silence = SilenceWatch({name: told.stale_after_s for name, told in self._node.loops.items()}, now)
+            board = Board(self._node, intakes, events=events, publisher=publisher, now=now)
+            desk = Desk(self._node.name, outlets, silence=silence, board=board, ask=self._ask)
             try:
-                self._serve(self._pipeline, intakes)
+                with ControlServer(socket_path(folder), desk.answer):
+                    self._serve(self._pipeline, intakes, silence=silence, board=board)
                 self._finish(self._pipeline, outlets)
             finally:
                 if publisher is not None:
@@ -90,6 +98,8 @@ class Service:
         answer: Future[dict[str, Any]] = Future()
 
         def action() -> None:
+            if not answer.set_running_or_notify_cancel():  # nobody waits for it any more: it is not done
+                return
             try:
                 assert self._pipeline is not None
                 answer.set_result(question(self._pipeline))
@@ -100,10 +110,10 @@ class Service:
         try:
             return answer.result(ANSWER_S)
         except WaitTimeout:
-            raise Unavailable("the service does not answer; is it running?") from None
+            undone = "nothing was done" if answer.cancel() else "it may still be done"
+            raise Unavailable(f"the service does not answer, {undone}; is it running, is the computer busy?") from None
 
-    def _serve(self, pipeline: Pipeline, intakes: Sequence[Intake]) -> None:
-        silence = SilenceWatch({name: told.stale_after_s for name, told in self._node.loops.items()}, time.monotonic())
+    def _serve(self, pipeline: Pipeline, intakes: Sequence[Intake], *, silence: SilenceWatch, board: Board) -> None:
         complaints = Complaints({intake.name: intake.counts for intake in intakes})
         for intake in intakes:
             intake.start()
@@ -112,6 +122,7 @@ class Service:
             while not self._stopping.is_set():
                 self._turn(pipeline, silence)
                 complaints.look(time.monotonic())
+                board.look(pipeline, time.monotonic())
                 self._notifier.status(in_words({name: loop.state for name, loop in pipeline.loops.items()}))
                 self._notifier.alive(time.monotonic())
         finally:

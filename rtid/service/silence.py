@@ -16,6 +16,10 @@ class SilenceWatch:
     def heard(self, loop: str, now: float) -> None:
         self._heard[loop] = self._said[loop] = now
 
+    def seconds(self, loop: str, now: float) -> float:
+        """How long ago its last reading came."""
+        return now - self._heard[loop]
+
     def due(self, now: float) -> list[tuple[str, float]]:
         """(loop, seconds without a reading) of those that are to be told now."""
         late = [name for name, after in self._after.items() if now - self._said[name] >= after]
