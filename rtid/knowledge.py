@@ -115,9 +115,14 @@ class Knowledge(Kept):
         if found is None:
             known = ", ".join(b.identity for b in self.baselines.all) or "none yet"
             raise ActionRefused(f"there is no baseline {identity!r}; there are: {known}")
-        fit = found.baseline.fit
+        self.adopt(found)
+
+    def adopt(self, accepted: AcceptedBaseline) -> None:
+        """Watch against this baseline, learnt here or in an earlier life; the estimate, if there is one, goes on."""
+        self.baselines.accept(accepted)
+        fit = accepted.baseline.fit
         self._learner, self._asked, self.broken = None, None, True
-        self._watch = self._new_watch(found.baseline, follower_of(self._structure, found.baseline))
+        self._watch = self._new_watch(accepted.baseline, follower_of(self._structure, accepted.baseline))
         if self._estimator is None:
             self._estimator = self._structure.estimator(fit, blank_record(fit.centre), memory=self._memory)
 
@@ -214,7 +219,8 @@ class Knowledge(Kept):
         self.baselines.accept(AcceptedBaseline(identity, baseline, known, by, because, reason))
         self._asked = None
         text = wording.baseline_text(identity, known, provisional=self._watch.provisional)
-        return Transition(None, None, "low", text, when[0], when[1], action="baseline", by=by or None)
+        detail = {"baseline": identity}
+        return Transition(None, None, "low", text, when[0], when[1], action="baseline", by=by or None, detail=detail)
 
 
 def structure_of(settings: LoopSettings) -> Structure:

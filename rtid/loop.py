@@ -11,13 +11,14 @@ from numpy.typing import NDArray
 from rtid.actions import Action, ActionRefused
 from rtid.judge import wording
 from rtid.judge.alarms import AlarmBook, Finding
+from rtid.judge.baselines import AcceptedBaseline
 from rtid.judge.data_checks import DataChecks
 from rtid.judge.gate import GateKeeper
 from rtid.judge.health import health_of
 from rtid.kept import Kept
 from rtid.knowledge import Knowledge
 from rtid.model.snapshot import CAUTION
-from rtid.operator_actions import Hold, act_on_alarm, action_event, check_action
+from rtid.operator_actions import Hold, act_on_alarm, action_event, check_action, recalled_action
 from rtid.report import Health, Report, State, Transition
 from rtid.rows import Rows
 from rtid.settings import Loop as LoopSettings
@@ -54,6 +55,7 @@ class Loop(Kept):
         self._hold = Hold()
         self._actions: list[Transition] = []  # events that are no alarms, not yet reported
         self._state: State = "waiting"
+        self._restarted = False
         self._last_row_s = 0.0  # data time
         self._last_report_s: float | None = None  # data time of the last report that was due
         self._health: tuple[Health, str] = ("function_check", "waiting: no reading yet")
@@ -92,16 +94,70 @@ class Loop(Kept):
             return None
         return self._say(now, due=fresh)
 
-    def act(self, action: Action, stamp: float) -> Report:
-        """A person's action, now. Raises ActionRefused with one line."""
+    def act(self, action: Action, stamp: float, *, silent_s: float = 0.0) -> Report:
+        """A person's action, `silent_s` after the last reading. Raises ActionRefused with one line."""
         check_action(action)
-        now = _Moment(self.report.time_s if self.report else stamp, stamp)
+        if self.report is None:
+            return self._remark(action, stamp)
+        now = _Moment(max(self.report.time_s, self._last_row_s + silent_s), stamp)
         if action.name in ("ack", "shelve", "unshelve"):
             act_on_alarm(self._book, action, time_s=now.time_s, stamp=stamp)
         else:
             text = self._do(action, now)
             self._actions.append(action_event(action, text, time_s=now.time_s, stamp=stamp))
         return self._say(now, due=True)
+
+    @property
+    def baselines(self) -> tuple[AcceptedBaseline, ...]:
+        """Every one there has been, in the order of acceptance."""
+        return tuple(self._knowledge.baselines.all)
+
+    @property
+    def baseline(self) -> str | None:
+        """The one in force; None while one is learnt."""
+        present = self._knowledge.baselines.present
+        return None if present is None else present.identity
+
+    def skip_baselines(self, last: int) -> None:
+        """The numbers of baselines go on after `last`."""
+        self._knowledge.baselines.skip(last)
+
+    def recall(self, event: Transition, baseline: AcceptedBaseline | None = None) -> None:
+        """The effect of an event that was told after this state was kept; nothing is told again.
+
+        `baseline` is the one that the event names.
+        """
+        if event.alarm is not None:
+            self._book.recall(event)
+        elif baseline is not None:
+            self._knowledge.adopt(baseline)
+        elif event.action == "rebaseline":
+            self._knowledge.learn_anew(recalled_action(event))
+        else:
+            self._hold.recall(event)
+
+    def restarted(self, stamp: float) -> None:
+        """The service was away: `report` says what is known, and nothing is good until readings come."""
+        now = _Moment(self.report.time_s if self.report else self._last_row_s, stamp)
+        self._state, self._restarted = "held" if self._hold.until_s is not None else "waiting", True
+        self._judge_health(now)
+        self.report = self._describe(now, due=True, transitions=())
+
+    @property
+    def hold(self) -> tuple[str, float] | None:
+        """Who holds the loop, and until when (stamp)."""
+        until_s = self._hold.until_s
+        return None if until_s is None else (self._hold.by, self._as_stamp(until_s))
+
+    @property
+    def shelved(self) -> tuple[tuple[str, str | None, float], ...]:
+        """The shelved alarms: name, signal, and until when (stamp)."""
+        return tuple((alarm, signal, self._as_stamp(end)) for alarm, signal, end in self._book.shelved())
+
+    @property
+    def progress(self) -> str:
+        """What the baseline still waits for; empty while there is one."""
+        return self._knowledge.progress
 
     def snapshot(self, reason: str) -> dict[str, Any]:
         """Model of now with its validation; every field but schema, version, time and node. Stamps stay numbers."""
@@ -125,6 +181,16 @@ class Loop(Kept):
         new = cls(settings)
         new.load_state(state)
         return new
+
+    def _remark(self, action: Action, stamp: float) -> Report:
+        """Before the first reading, when there is no data time yet, only a remark makes sense."""
+        if action.name != "note":
+            raise ActionRefused("no reading has come yet: there is nothing to act on")
+        remark = action_event(action, action.text, time_s=self._last_row_s, stamp=stamp)
+        return self._describe(_Moment(self._last_row_s, stamp), due=False, transitions=(remark,))
+
+    def _as_stamp(self, time_s: float) -> float:
+        return time_s if self.report is None else self.report.stamp + time_s - self.report.time_s
 
     def _take_in(self, rows: Rows, now: _Moment) -> State:
         credible = self._checks.credible(rows.values)
@@ -202,13 +268,16 @@ class Loop(Kept):
             return self._repeat(self.report, now)
         self._last_report_s = now.time_s if due else last
         self._judge_health(now)
-        self.report = Report(
+        self.report = self._describe(now, due=due, transitions=transitions)
+        return self.report
+
+    def _describe(self, now: _Moment, *, due: bool, transitions: tuple[Transition, ...]) -> Report:
+        return Report(
             loop=self.settings.name, time_s=now.time_s, stamp=now.stamp, samples=self._knowledge.samples,
             state=self._state, health=self._health[0], since=self._health_since or now.stamp, reason=self._health[1],
             due=due, quantities=self._knowledge.quantities(), drift=self._knowledge.drift(), transitions=transitions,
             alarms=self._book.active(),
         )  # fmt: skip
-        return self.report
 
     def _repeat(self, last: Report, now: _Moment) -> Report:
         """Nothing to say between two publications: the last report at the present time."""
@@ -221,7 +290,7 @@ class Loop(Kept):
     def _judge_health(self, now: _Moment) -> None:
         alarms, unchanged = self._book.active(), self._knowledge.unchanged
         health, reason = health_of(self._state, alarms, detail=self._detail(now), unchanged=unchanged)
-        shelved = [wording.shelved_text(n, now.stamp + end - now.time_s) for n, end in self._book.shelved()]
+        shelved = [wording.shelved_text(n, now.stamp + end - now.time_s) for n, _, end in self._book.shelved()]
         if health != self._health[0] or self._health_since is None:
             self._health_since = now.stamp
         self._health = (health, "; ".join((reason, *shelved)))
@@ -232,7 +301,7 @@ class Loop(Kept):
             return self._knowledge.progress
         if self._state == "held" and self._hold.until_s is not None:
             return wording.held_text(now.stamp + self._hold.until_s - now.time_s, self._hold.by)
-        return ""
+        return wording.RESTARTED if self._state == "waiting" and self._restarted else ""
 
 
 def identity_of(settings: LoopSettings) -> list[Any]:

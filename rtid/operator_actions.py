@@ -2,11 +2,15 @@
 
 from __future__ import annotations
 
-from rtid.actions import BECAUSE, Action, ActionRefused
+from typing import cast
+
+from rtid.actions import BECAUSE, Action, ActionName, ActionRefused
 from rtid.judge.alarms import AlarmBook
 from rtid.kept import Kept
 from rtid.report import Transition
 from rtid.settings import DEFAULT_ALARMS
+
+_DETAIL = ("for_s", "because", "baseline", "reason")  # what the event of an action says beside its text
 
 
 class Hold(Kept):
@@ -28,6 +32,13 @@ class Hold(Kept):
             self.until_s = None
         return over
 
+    def recall(self, event: Transition) -> None:
+        """A hold or its end that was told after this state was kept."""
+        if event.action == "hold":
+            self.until_s, self.by = event.time_s + (event.detail or {}).get("for_s", 0.0), event.by or ""
+        elif event.action == "resume":
+            self.until_s = None
+
     def shift(self, delta_s: float) -> None:
         """The device's clock began anew."""
         self.until_s = None if self.until_s is None else self.until_s + delta_s
@@ -35,7 +46,16 @@ class Hold(Kept):
 
 def action_event(action: Action, text: str, *, time_s: float, stamp: float) -> Transition:
     reason = f": {action.reason}" if action.reason else ""
-    return Transition(None, None, "low", text + reason, time_s, stamp, action=action.name, by=action.by)
+    given = {name: getattr(action, name) for name in _DETAIL}
+    detail = {name: value for name, value in given.items() if value} or None
+    return Transition(
+        None, None, "low", text + reason, time_s, stamp, action=action.name, by=action.by, detail=detail
+    )
+
+
+def recalled_action(event: Transition) -> Action:
+    """The action that `action_event` told of."""
+    return Action(cast(ActionName, event.action), event.by or "", **dict(event.detail or {}))
 
 
 def check_action(action: Action) -> None:
@@ -54,12 +74,16 @@ def check_action(action: Action) -> None:
 
 def act_on_alarm(book: AlarmBook, action: Action, *, time_s: float, stamp: float) -> None:
     """ack, shelve, unshelve. Raises ActionRefused when there is nothing to act on."""
-    alarm = action.alarm or ""
+    alarm, signal, by, why = action.alarm or "", action.signal, action.by, action.reason
     if action.name == "shelve":
         until_s = time_s + (action.for_s or 0.0)
-        book.shelve(alarm, signal=action.signal, until_s=until_s, by=action.by, time_s=time_s, stamp=stamp)
+        book.shelve(alarm, signal=signal, until_s=until_s, by=by, time_s=time_s, stamp=stamp, why=why)
     elif action.name == "unshelve":
-        if not book.unshelve(alarm, signal=action.signal, by=action.by, time_s=time_s, stamp=stamp):
-            raise ActionRefused(f"{alarm} is not shelved")
-    elif not book.acknowledge(alarm, signal=action.signal, by=action.by, time_s=time_s, stamp=stamp):
-        raise ActionRefused(f"{alarm} does not wait for an acknowledgement")
+        if not book.unshelve(alarm, signal=signal, by=by, time_s=time_s, stamp=stamp, why=why):
+            raise ActionRefused(f"{_subject(action)} is not shelved")
+    elif not book.acknowledge(alarm, signal=signal, by=by, time_s=time_s, stamp=stamp, why=why):
+        raise ActionRefused(f"{_subject(action)} does not wait for an acknowledgement")
+
+
+def _subject(action: Action) -> str:
+    return f"{action.alarm} of {action.signal}" if action.signal else str(action.alarm)

@@ -5,6 +5,7 @@ from __future__ import annotations
 from collections.abc import Mapping
 from dataclasses import dataclass, replace
 
+from rtid.judge import wording
 from rtid.kept import Kept
 from rtid.report import ActiveAlarm, Transition, TransitionName
 from rtid.settings import DEFAULT_ALARMS, AlarmSetting
@@ -67,22 +68,23 @@ class AlarmBook(Kept):
             entry.clear = True
             self._maybe_clear(key, entry, setting, time_s, stamp)
 
-    def acknowledge(self, alarm: str, *, time_s: float, stamp: float, by: str, signal: str | None = None) -> bool:
+    def acknowledge(
+        self, alarm: str, *, time_s: float, stamp: float, by: str, signal: str | None = None, why: str = ""
+    ) -> bool:
         """False when there is nothing to acknowledge."""
         entry = self._entries.get((alarm, signal))
         if entry is None or entry.acknowledged or not entry.raised:
             return False
         entry.acknowledged = True
         retain = entry.active is not None and not entry.clear
+        finding = _told(entry.last, f"acknowledged by {by}", why)
         self._transitions.append(
-            self._transition((alarm, signal), "acknowledged", entry.last, time_s, stamp, by=by, retain=retain)
+            self._transition((alarm, signal), "acknowledged", finding, time_s, stamp, by=by, retain=retain)
         )
-        if entry.active is not None and entry.clear:
-            self._finish((alarm, signal), entry, time_s, stamp)
-        elif entry.active is None:
-            del self._entries[(alarm, signal)]
-        else:
+        if entry.active is not None:
             entry.active = replace(entry.active, acknowledged=True)
+        elif entry.shelved_until is None:
+            del self._entries[(alarm, signal)]
         return True
 
     @property
@@ -96,13 +98,20 @@ class AlarmBook(Kept):
             if entry is not None and entry.active is not None:
                 self._finish((alarm, None), entry, time_s, stamp)
 
-    def shelve(self, alarm: str, *, signal: str | None, until_s: float, by: str, time_s: float, stamp: float) -> None:
+    def shelve(
+        self, alarm: str, *, signal: str | None, until_s: float, by: str, time_s: float, stamp: float, why: str = ""
+    ) -> None:
         """Nothing is heard of the alarm until `until_s` of data time."""
         entry = self._entries.setdefault((alarm, signal), AlarmEntry())
         entry.shelved_until = until_s
-        self._transitions.append(self._transition((alarm, signal), "shelved", entry.last, time_s, stamp, by=by))
+        text = f"{wording.shelved_text(alarm, stamp + until_s - time_s)}; by {by}"
+        finding = _told(entry.last, text, why)
+        shelved = self._transition((alarm, signal), "shelved", finding, time_s, stamp, by=by)
+        self._transitions.append(replace(shelved, detail={"for_s": until_s - time_s}))
 
-    def unshelve(self, alarm: str, *, signal: str | None, by: str | None, time_s: float, stamp: float) -> bool:
+    def unshelve(
+        self, alarm: str, *, signal: str | None, by: str | None, time_s: float, stamp: float, why: str = ""
+    ) -> bool:
         """False when it was not shelved. An alarm that stands is heard again."""
         key = (alarm, signal)
         entry = self._entries.get(key)
@@ -110,8 +119,9 @@ class AlarmBook(Kept):
             return False
         entry.shelved_until = None
         standing = entry.active is not None
+        finding = _told(entry.last, f"unshelved by {by}" if by else "the shelving has ended by itself", why)
         self._transitions.append(
-            self._transition(key, "unshelved", entry.last, time_s, stamp, by=by, retain=standing)
+            self._transition(key, "unshelved", finding, time_s, stamp, by=by, retain=standing)
         )
         if standing:
             self._transitions.append(self._transition(key, "active", entry.last, time_s, stamp))
@@ -125,15 +135,34 @@ class AlarmBook(Kept):
             if entry.shelved_until is not None and time_s >= entry.shelved_until:
                 self.unshelve(alarm, signal=signal, by=None, time_s=time_s, stamp=stamp)
 
-    def shelved(self) -> list[tuple[str, float]]:
-        """Names of the shelved alarms and the data times at which that ends."""
-        return [(name, e.shelved_until) for (name, _), e in self._entries.items() if e.shelved_until is not None]
+    def shelved(self) -> list[tuple[str, str | None, float]]:
+        """Name and signal of the shelved alarms, and the data times at which that ends."""
+        return [(*key, e.shelved_until) for key, e in self._entries.items() if e.shelved_until is not None]
 
     def shift(self, delta_s: float) -> None:
         """The device's clock began anew: what waits, waits as long as before."""
         for entry in self._entries.values():
             entry.pending_since = None if entry.pending_since is None else entry.pending_since + delta_s
             entry.shelved_until = None if entry.shelved_until is None else entry.shelved_until + delta_s
+
+    def recall(self, event: Transition) -> None:
+        """Take the step of an event that was told after this state was kept, without telling it again."""
+        key = (event.alarm or "", event.signal)
+        entry = self._entries.setdefault(key, AlarmEntry())
+        if event.transition in ("active", "updated"):
+            self._recall_standing(entry, event)
+        elif event.transition == "cleared":
+            entry.active, entry.clear, entry.raised = None, True, True
+            entry.last = replace(entry.last, present=False, text=event.text)
+        elif event.transition == "acknowledged":
+            entry.acknowledged = True
+            entry.active = replace(entry.active, acknowledged=True) if entry.active else None
+        else:
+            for_s = (event.detail or {}).get("for_s", 0.0)
+            entry.shelved_until = event.time_s + for_s if event.transition == "shelved" else None
+        waits = entry.raised and not entry.acknowledged
+        if entry.active is None and entry.shelved_until is None and (not waits or event.transition == "unshelved"):
+            del self._entries[key]
 
     def take_transitions(self) -> tuple[Transition, ...]:
         taken, self._transitions = tuple(self._transitions), []
@@ -145,6 +174,16 @@ class AlarmBook(Kept):
     def active(self) -> tuple[ActiveAlarm, ...]:
         standing = (e for e in self._entries.values() if e.shelved_until is None)
         return tuple(entry.active for entry in standing if entry.active is not None)
+
+    @staticmethod
+    def _recall_standing(entry: AlarmEntry, event: Transition) -> None:
+        finding = Finding(True, event.text, event.quantity, event.change_pct, event.low_pct, event.high_pct)
+        fresh = ActiveAlarm(event.alarm or "", event.priority, event.stamp, event.text, event.signal, event.quantity)
+        if entry.active is None:
+            entry.active, entry.acknowledged = fresh, False
+        else:
+            entry.active = replace(entry.active, text=event.text, quantity=event.quantity)
+        entry.last, entry.clear, entry.raised, entry.pending_since = finding, False, True, None
 
     def _maybe_raise(self, key: tuple[str, str | None], entry: AlarmEntry, finding: Finding, *when: float) -> None:
         if not finding.present:
@@ -195,6 +234,12 @@ class AlarmBook(Kept):
             time_s=when[0], stamp=when[1], signal=key[1], quantity=finding.quantity, change_pct=finding.change_pct,
             low_pct=finding.low_pct, high_pct=finding.high_pct, by=by, retain=retain,
         )  # fmt: skip
+
+
+def _told(finding: Finding, words: str, why: str) -> Finding:
+    """`finding` with a person's deed before its text."""
+    said = f"{words}: {why}" if why else words
+    return replace(finding, text=". ".join(part for part in (said, finding.text) if part))
 
 
 def _sharper(now: Finding, told: Finding) -> bool:

@@ -13,6 +13,7 @@ CAUTION = (
     "Before you touch the machine: isolate and lock it, wait for stored energy and hot parts, mind automatic restart. "
     "rtid only advises; it is no safety function."
 )
+RESTARTED = "waiting: rtid was restarted and no reading has come since; what is shown was known before"
 INVALID = "The estimate met numbers that it cannot go on from; it stands still."
 _LOOK_FIRST = {
     "gain": "Look first at what makes the output weaker or stronger for the same input: friction, fouling, supply, "
