@@ -38,7 +38,7 @@ class FollowingEstimator(Kept):
     """`structure.Estimator` for an output-error model. `memory`: rows after which a datum counts 1/e."""
 
     KEPT = (
-        "_fit", "_covariance", "_spread", "_prior", "_weight", "_blocks", "invalid", "_predictor", "_whitener",
+        "_fit", "_covariance", "_spread", "_prior", "_weight", "_last_psi", "_blocks", "invalid", "_predictor", "_whitener",
         "_noise", "_leftover", "_forgetting",
     )  # fmt: skip
 
@@ -58,6 +58,7 @@ class FollowingEstimator(Kept):
         e, _, good = self._start_whitening(residual, psi, ok)
         self._noise = RunningAutocovariance(autocovariance(residual, ok))
         self._leftover = RunningAutocovariance(autocovariance(e, good, LONG_RUN_LAGS))
+        self._last_psi = np.vstack((np.zeros((1, len(fit.theta))), psi))[-2:]
         self._weight = float(min(memory, max(1, ok.sum())))
         self._blocks = 0
         self.invalid = False
@@ -70,7 +71,8 @@ class FollowingEstimator(Kept):
         """Learn from the next m rows: residuals e (one step) and ε (simulated) before learning, rows that count."""
         residual, psi, ok = self._predictor.run(inputs, output, ok)
         e, phi, good = self._whitener.run(residual, psi, ok)
-        self._learn(e[good], phi[good][:, self._free], psi[-2:])
+        self._last_psi = np.vstack((self._last_psi, psi))[-2:]
+        self._learn(e[good], phi[good][:, self._free])
         if good.any():
             self._learn_noise(np.where(ok, residual, 0.0), np.where(good, e, 0.0), float(good.sum()))
         return e, residual, good
@@ -94,9 +96,9 @@ class FollowingEstimator(Kept):
     def _start_information(self) -> SubspaceForgetting:
         information = np.asarray(np.linalg.inv(self._covariance + 1e-18 * np.eye(len(self._free))), dtype=np.float64)
         share = min(1.0, self._memory / max(1, self._fit.rows))
-        return SubspaceForgetting(information, share * information, self._prior[self._free])
+        return SubspaceForgetting(share * information, share * information, self._prior[self._free])
 
-    def _learn(self, e: Array, phi: Array, last_psi: Array) -> None:
+    def _learn(self, e: Array, phi: Array) -> None:
         if len(e) == 0:
             return
         sigma = self._fit.sigma
@@ -111,7 +113,7 @@ class FollowingEstimator(Kept):
             self._forgetting.load_state(before[0])
             self._covariance = before[1]
         else:
-            self._move(step, last_psi)
+            self._move(step)
 
     def _update(self, scaled: Array, unit: Array) -> Array:
         """Information and covariance with the rows φ (m, p) and residuals (m,), in units of the noise; the step."""
@@ -138,29 +140,29 @@ class FollowingEstimator(Kept):
         bound = limit[self._free]
         return np.asarray(np.minimum(np.maximum(step, -bound), bound))
 
-    def _move(self, step: Array, last_psi: Array) -> None:
+    def _move(self, step: Array) -> None:
         theta = self._fit.theta.copy()
         theta[self._free] += step
         theta = self._plant.within(theta)
         moved = theta - self._fit.theta
         moved[-1] = 0.0
-        shifts = last_psi @ moved
+        shifts = self._last_psi @ moved
         model = self._plant.model(theta, self._fit.sign)
-        self._predictor.shift(theta, model, (float(shifts[-1]), float(shifts[0]) if len(shifts) > 1 else 0.0))
+        self._predictor.shift(theta, model, (float(shifts[1]), float(shifts[0])))
         p = len(theta)
         covariance = np.zeros((p, p))
         covariance[np.ix_(self._free, self._free)] = self._covariance
         self._fit = replace(self._fit, theta=theta, covariance=covariance, rows=self._fit.rows + 1)
 
     def _learn_noise(self, residual: Array, e: Array, rows: float) -> None:
-        keep = float(np.exp(-rows / self._memory))
+        self._weight = min(self._memory, self._weight + rows)
+        keep = 1.0 - min(1.0, rows / self._weight)
         usual = float(np.sqrt(self._noise.covariance[0])) + self._floor
         present = float(np.sqrt(residual @ residual / rows))
         tamed = np.clip(residual, -4.0 * usual, 4.0 * usual) * min(1.0, _SWELL * usual / max(present, 1e-300))
         self._noise.add(tamed, keep=keep, rows=rows)
         clipped = np.clip(e, -HUBER * self._fit.sigma, HUBER * self._fit.sigma)
         self._leftover.add(clipped, keep=keep, rows=rows)
-        self._weight = min(self._memory, self._weight + rows)
         self._blocks += 1
         if self._blocks % _RENEW_EVERY == 0:
             self._whitener.coefficients = autoregression(self._noise.covariance, self._weight)

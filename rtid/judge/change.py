@@ -95,7 +95,7 @@ class Judged:
             return self._dead_time(value - before, before, variance + self._baseline_variance[name])
         if value == 0.0 or (value > 0.0) != (before > 0.0):
             return self._reversed(name, value, before)
-        error = float(np.sqrt(variance + self._baseline_variance[name]))
+        error = max(float(np.sqrt(variance + self._baseline_variance[name])), 1e-12)
         delta = float(np.log(value / before))
         ends = [100.0 * float(np.expm1(min(delta + k * error, 20.0))) for k in (0.0, -SURE, SURE)]
         return QuantityChange(name, ends[0], ends[1], ends[2], 100.0 * self._allowed(name), abs(delta) / error)

@@ -21,8 +21,9 @@ _MOST_ROWS = 20_000
 
 
 class Relearning(Kept):
-    """Collects the rows since a flag and hands out a fresh estimator whenever they carry a better fit.
+    """Collects the rows since a flag and hands out an estimator that knows nothing else, at first perhaps little.
 
+    `found`: the rows have carried a fit that knows the plant.
     Rows older than the estimator's `memory` (rows) are left out, so a plant that goes on changing is followed.
     """
 
@@ -55,7 +56,5 @@ class Relearning(Kept):
         fresh = self._structure.first_fit(record)
         starts = [self._before, estimator.fit, *([fresh] if fresh is not None else [])]
         fit = min((self._structure.refit(record, start, moving=True) for start in starts), key=lambda f: f.sigma)
-        if ill_known(self._structure, fit) is not None:
-            return estimator
-        self.found = True
+        self.found = self.found or ill_known(self._structure, fit) is None
         return self._structure.estimator(fit, record, memory=self._memory)

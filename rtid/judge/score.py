@@ -21,6 +21,7 @@ MEMORIES = (50, 200, 800, 3200)  # rows
 CLIP = 4.0
 _LOCAL = 200.0  # rows of the local noise level
 _FADE = 1e-3  # lets directions fade that have had no news for a long time
+_ABSURD = 1e6  # deviations, and times the power at the baseline: beyond, a row says nothing about the plant
 _SHARING = 1.5  # charts of one residual alarm together: their run lengths add up to less
 
 
@@ -75,6 +76,8 @@ class DriftScore(Kept):
 
     def step(self, e: Array, phi: Array, *, frozen: bool) -> None:
         """Take in the next rows, e (m,) and φ (m, p); while `frozen` the null learns nothing but the offset."""
+        sane = (np.abs(e) < _ABSURD) & (phi**2 < _ABSURD * (1.0 + np.diag(self._gamma0))).all(axis=1)
+        e, phi = e[sane], phi[sane]
         if len(e) == 0:
             return
         if not frozen:
@@ -115,7 +118,8 @@ class DriftScore(Kept):
             gain[:, :-1] = 0.0
         self._null = self._null + gain.T @ np.clip(innovation, -3.0, 3.0)
         if not frozen:
-            self._null_covariance = self._null_covariance - gain.T @ gain
+            learnt = self._null_covariance - gain.T @ gain
+            self._null_covariance = 0.5 * (learnt + learnt.T)
 
     def _evaluate(self) -> Array:
         kept = 1.0 - np.exp(-2.0 * self._rates)

@@ -194,5 +194,6 @@ class Watch(Kept):
 def offset_walk(structure: Structure, baseline: Baseline) -> float:
     """Variance a row, in units of the noise, by which the offset may walk: an unmeasured load is no plant change."""
     share = min(1.0, structure.period / structure.slowest(baseline.fit)) ** 2
-    output_power = float(baseline.gamma0[0, 0] + 1.0)
-    return 1e-4 * share * output_power
+    gamma0 = baseline.gamma0
+    moving = float(gamma0[0, 0] - gamma0[0, -1] ** 2 / gamma0[-1, -1])
+    return 1e-4 * share * (moving + 1.0)
