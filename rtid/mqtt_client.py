@@ -61,9 +61,9 @@ def _password(path: str | None) -> str | None:
 
 
 def _credential(path: Path) -> Path:
-    """The file itself, or else the systemd credential of the same name."""
-    folder = os.environ.get("CREDENTIALS_DIRECTORY")
-    return Path(folder) / path.name if folder and not path.exists() else path
+    """The systemd credential of the same name, or else the file itself, which a service need not be able to read."""
+    credential = Path(os.environ.get("CREDENTIALS_DIRECTORY", "")) / path.name
+    return credential if credential.is_absolute() and credential.is_file() else path
 
 
 def _encrypt(client: Client, tls: Tls) -> None:

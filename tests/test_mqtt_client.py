@@ -35,6 +35,18 @@ def test_missing_password_file_is_looked_for_among_the_credentials(
     assert password_of(broker) == b"from systemd"
 
 
+def test_a_credential_goes_before_a_file_that_only_root_may_read(
+    tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    (tmp_path / "etc").mkdir()
+    (tmp_path / "etc" / "broker.secret").mkdir()  # reading it fails for root too
+    (tmp_path / "broker.secret").write_text("from systemd")
+    monkeypatch.setenv("CREDENTIALS_DIRECTORY", str(tmp_path))
+    assert (
+        password_of(Broker(username="rtid", password_file=str(tmp_path / "etc" / "broker.secret"))) == b"from systemd"
+    )
+
+
 def test_unreadable_password_file_is_one_line_that_names_it(tmp_path: Path) -> None:
     (tmp_path / "binary").write_bytes(b"\xff\xfe")
     for path in (tmp_path, tmp_path / "binary"):
