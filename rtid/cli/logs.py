@@ -52,7 +52,7 @@ def start(*, level: int = logging.INFO, tracebacks: bool = False) -> None:
     handler = LimitedHandler(sys.stderr)
     handler.setFormatter(OneLine(tracebacks=tracebacks, journal=in_journal(sys.stderr)))
     logging.basicConfig(level=level, handlers=[handler], force=True)
-    logging.getLogger("rtid.mqtt").setLevel(max(level, logging.WARNING))
+    logging.getLogger("rtid.mqtt").setLevel(max(level, logging.ERROR))  # why a broker is away, rtid.publish says
 
 
 def _plain(record: logging.LogRecord) -> logging.LogRecord:
