@@ -155,6 +155,11 @@ class Loop(Kept):
         return tuple((alarm, signal, self._as_stamp(end)) for alarm, signal, end in self._book.shelved())
 
     @property
+    def open_alarms(self) -> frozenset[tuple[str, str | None]]:
+        """Name and signal of the alarms that are not both back to normal and acknowledged."""
+        return self._book.open
+
+    @property
     def progress(self) -> str:
         """What the baseline still waits for; empty while there is one."""
         return self._knowledge.progress

@@ -71,11 +71,12 @@ class RecordedRun:
             self._pipeline.flush(name, end)
         return end
 
-    def _deliver(self, report: Report) -> None:
-        for transition in report.transitions:
-            self._events.append(transition, node=self._node.name, loop=report.loop)
-        self._tally.report(report)
-        self._trends[report.loop].row(report)
+    def _deliver(self, reports: Sequence[Report]) -> None:
+        for report in reports:
+            for transition in report.transitions:
+                self._events.append(transition, node=self._node.name, loop=report.loop)
+            self._tally.report(report)
+            self._trends[report.loop].row(report)
 
     def _rejected(self) -> dict[str, tuple[int, str]]:
         """Per kind: how many, and the first of them; over all files and all grids."""

@@ -145,6 +145,11 @@ class AlarmBook(Kept):
             entry.pending_since = None if entry.pending_since is None else entry.pending_since + delta_s
             entry.shelved_until = None if entry.shelved_until is None else entry.shelved_until + delta_s
 
+    @property
+    def open(self) -> frozenset[tuple[str, str | None]]:
+        """Name and signal of the alarms that are not both back to normal and acknowledged."""
+        return frozenset(self._entries)
+
     def recall(self, event: Transition) -> None:
         """Take the step of an event that was told after this state was kept, without telling it again."""
         key = (event.alarm or "", event.signal)

@@ -81,10 +81,26 @@ class MqttPublisher:
         """The message of an alarm; empty when it is back to normal and acknowledged. Actions have no topic."""
         if transition.alarm is None:
             return
-        signal = "" if transition.signal is None else f"/{transition.signal}"
-        topic = f"{self._root}/{loop}/alarm/{transition.alarm}{signal}"
         content = messages.dump(payload) if transition.retain else b""
+        topic = self._alarm_topic(loop, transition.alarm, transition.signal)
         self._outbox.put(Outgoing(topic, content, qos=1, every=True))
+
+    def standing(self, loop: str, told: Mapping[tuple[str, str | None], Mapping[str, Any] | None]) -> None:
+        """What is to be kept of these alarms (name and signal); None: nothing."""
+        for (alarm, signal), payload in told.items():
+            content = b"" if payload is None else messages.dump(payload)
+            self._outbox.put(Outgoing(self._alarm_topic(loop, alarm, signal), content, qos=1))
+
+    def forget(self, loop: str) -> None:
+        """The loop is watched no longer: nothing is kept of its numbers."""
+        self._last_health.pop(loop, None)
+        for name in ("model", "drift", "health"):
+            self._outbox.put(Outgoing(f"{self._root}/{loop}/{name}", b"", qos=1))
+
+    def greet(self, status: Mapping[str, Any]) -> None:
+        """Another `status`, now and at every connection to come."""
+        self._greeting = messages.dump(status)
+        self._outbox.put(Outgoing(self._status_topic, self._greeting, qos=1))
 
     def snapshot(self, payload: Mapping[str, Any], loop: str) -> None:
         topic = f"{self._root}/{loop}/snapshot"
@@ -126,6 +142,9 @@ class MqttPublisher:
     @property
     def _status_topic(self) -> str:
         return f"{self._root}/status"
+
+    def _alarm_topic(self, loop: str, alarm: str, signal: str | None) -> str:
+        return f"{self._root}/{loop}/alarm/{alarm}" + ("" if signal is None else f"/{signal}")
 
     def _put(self, topic: str, payload: Mapping[str, Any]) -> None:
         self._outbox.put(Outgoing(f"{self._root}/{topic}", messages.dump(payload)))

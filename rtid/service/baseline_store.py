@@ -24,16 +24,14 @@ class BaselineStore:
         self._plant = plant
         self._kept: set[str] = set()
 
-    def know(self, identities: set[str]) -> None:
-        """These are on the disk."""
-        self._kept |= identities
-
     def keep(self, accepted: AcceptedBaseline) -> None:
-        """Write it unless that was done. Raises InputOutputError."""
+        """Write it unless it is there. Raises InputOutputError."""
         if accepted.identity in self._kept:
             return
-        body = {"plant": self._plant, "accepted": accepted}
-        sealed.write(self._path(accepted.identity), sealed.seal(body, BASELINE))
+        path = self._path(accepted.identity)
+        content = sealed.seal({"plant": self._plant, "accepted": accepted}, BASELINE)
+        if _content(path) != content:
+            sealed.write(path, content)
         self._kept.add(accepted.identity)
 
     def get(self, identity: str) -> AcceptedBaseline | None:
@@ -59,3 +57,10 @@ class BaselineStore:
 
     def _path(self, identity: str) -> Path:
         return self._folder / f"{identity}.json"
+
+
+def _content(path: Path) -> bytes | None:
+    try:
+        return path.read_bytes()
+    except OSError:
+        return None

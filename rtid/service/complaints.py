@@ -20,6 +20,11 @@ class Complaints:
         self._said: dict[str, dict[str, int]] = {name: {} for name in counts}
         self._last: dict[str, float] = {}
 
+    def follow(self, counts: Mapping[str, Counts]) -> None:
+        """Look at these from now on; what was said of counts that stay is not said again."""
+        self._said = {name: self._said[name] if self._counts.get(name) is kept else {} for name, kept in counts.items()}
+        self._counts = counts
+
     def look(self, now: float) -> None:
         """`now` is the monotonic clock in seconds."""
         for name, counts in self._counts.items():

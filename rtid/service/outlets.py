@@ -1,19 +1,19 @@
-"""Where the worker's reports go: the event list on disk first, then the broker, then who watches in this process."""
+"""Where the worker's reports go: to the disk first, then the broker, then who watches in this process."""
 
 from __future__ import annotations
 
 import logging
 import time
-from collections.abc import Callable, Mapping, Sequence
+from collections.abc import Callable, Iterable, Mapping, Sequence
 from typing import Any, Protocol
 
-from rtid.errors import InputOutputError
-from rtid.publish.events import EventLog
-from rtid.publish.messages import event as event_payload
+from rtid.publish.events import Event
 from rtid.publish.mqtt import MqttPublisher
 from rtid.report import Report, Transition
+from rtid.service.memory import Memory
 
 NODE_LOOP = "_node"  # the place of the node's own alarms among the topics
+STORAGE = "storage"
 
 log = logging.getLogger("rtid.service")
 
@@ -29,68 +29,78 @@ class Observer(Protocol):
 class Outlets:
     """`deliver` takes every report of every loop. Nothing here blocks, and a full disk stops nothing."""
 
-    def __init__(
-        self, node: str, events: EventLog, *, publisher: MqttPublisher | None, observers: Sequence[Observer] = ()
-    ) -> None:
-        self._node = node
-        self._events = events
-        self._publisher = publisher
+    def __init__(self, memory: Memory, *, observers: Sequence[Observer] = ()) -> None:
+        self._memory = memory
         self._observers = tuple(observers)
-        self._failure = ""  # why the last event is not on disk
-        self._alarmed = False
+        self._publisher: MqttPublisher | None = None
+        before = memory.events.latest(STORAGE)
+        self._alarmed = before is not None and before["transition"] == "active"
 
-    def deliver(self, report: Report) -> None:
-        for transition in report.transitions:
-            self._event(transition, report.loop)
-            self._watch_storage()
-        self.publish(report)
-        for observer in self._observers:
-            _guarded(observer.report, report)
+    def connect(self, publisher: MqttPublisher | None) -> None:
+        """Publish there from now on; the one before has said goodbye."""
+        self._publisher = publisher
+        if publisher is not None and not self._alarmed:  # a killed service may have left it behind
+            publisher.standing(NODE_LOOP, {(STORAGE, None): None})
+
+    def deliver(self, reports: Sequence[Report]) -> None:
+        """Of one loop, in the order in which they came about; the loop is as they say together."""
+        self.tell(reports[0].loop, [transition for report in reports for transition in report.transitions])
+        for report in reports:
+            self.publish(report)
+            for observer in self._observers:
+                _guarded(observer.report, report)
+
+    def tell(self, loop: str, transitions: Iterable[Transition]) -> None:
+        """What happened to a loop, or to the node: kept on the disk, then told."""
+        happened = list(transitions)
+        for event, transition in zip(self._memory.keep(loop, happened), happened, strict=True):
+            self._pass_on(event, transition, loop)
+        if happened:
+            self.watch_storage()
 
     def publish(self, report: Report) -> None:
         """Put a report on the broker: its numbers when it is due, its health when that changed."""
         if self._publisher is not None:
             self._publisher.report(report)
 
+    def announce(self, report: Report) -> None:
+        """What the broker is to keep of a loop and of its alarms, whatever it kept before."""
+        self.publish(report)
+        if self._publisher is not None:
+            self._publisher.standing(report.loop, self._memory.told(report.loop))
+
+    def forget(self, loop: str) -> None:
+        """Nothing is to be kept of a loop that is watched no longer."""
+        if self._publisher is not None:
+            self._publisher.standing(loop, dict.fromkeys(self._memory.told(loop)))
+            self._publisher.forget(loop)
+
     def snapshot(self, payload: dict[str, Any], loop: str) -> None:
         if self._publisher is not None:
             self._publisher.snapshot(payload, loop)
 
-    def _watch_storage(self) -> None:
-        """The node's alarm `storage` stands while events cannot be written."""
-        if bool(self._failure) == self._alarmed:
-            return
-        self._alarmed = not self._alarmed
-        self._event(_storage(self._failure), NODE_LOOP)
+    def watch_storage(self) -> None:
+        """The node's alarm `storage` stands while something cannot be written."""
+        failure = self._memory.failure
+        if bool(failure) != self._alarmed:
+            self._alarmed = not self._alarmed
+            self.tell(NODE_LOOP, [_storage(failure)])
 
-    def _event(self, transition: Transition, loop: str) -> None:
-        self._pass_on(self._record(transition, loop), transition, loop)
-
-    def _record(self, transition: Transition, loop: str) -> dict[str, Any]:
-        try:
-            payload = self._events.append(transition, node=self._node, loop=loop)
-        except InputOutputError as error:
-            self._failure = str(error)
-            return event_payload(transition, node=self._node, loop=loop, sequence=self._events.sequence)
-        self._failure = ""
-        return payload
-
-    def _pass_on(self, payload: dict[str, Any], transition: Transition, loop: str) -> None:
+    def _pass_on(self, event: Event, transition: Transition, loop: str) -> None:
         log.log(_level(transition), "%s: %s", loop, transition.text)
         if self._publisher is not None:
-            self._publisher.event(payload, loop, transition)
+            self._publisher.event(event, loop, transition)
         for observer in self._observers:
-            _guarded(observer.event, payload, transition)
+            _guarded(observer.event, event, transition)
 
 
 def _storage(failure: str) -> Transition:
     now = time.time()
-    text = f"events are not stored: {failure}" if failure else "events are stored again, those that waited too"
     return Transition(
-        alarm="storage",
+        alarm=STORAGE,
         transition="active" if failure else "cleared",
         priority="medium",
-        text=text,
+        text=f"state and events are not stored: {failure}" if failure else "state and events are stored again",
         time_s=now,
         stamp=now,
         retain=bool(failure),

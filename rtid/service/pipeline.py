@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Iterable, Mapping
+from collections.abc import Callable, Iterable, Mapping, Sequence
 
 from rtid import settings
 from rtid.actions import Action
@@ -14,19 +14,32 @@ from rtid.rows import Rows
 
 
 class Pipeline:
-    """The grids and loops of one node; every report goes to `deliver`, in the order in which it came about.
+    """The grids and loops of one node; all reports go to `deliver`, in the order in which they came about.
 
-    `rows` counts the grid rows over all loops, `blocks` the blocks of each. Not safe for threads: one worker owns it.
-    `stamp` is a label in seconds since 1970.
+    Those of one loop that came about at one time go together: when they are delivered there is nothing between the loop
+    and its grid. `rows` counts the grid rows over all loops, `blocks` the blocks of each. `stamp` is a label in seconds
+    since 1970. Not safe for threads: one worker owns it.
     """
 
-    def __init__(self, told: Mapping[str, settings.Loop], deliver: Callable[[Report], None]) -> None:
-        self.loops = {name: Loop(loop) for name, loop in told.items()}
-        self.grids = {name: Grid(loop) for name, loop in told.items()}
+    def __init__(self, told: Mapping[str, settings.Loop], deliver: Callable[[Sequence[Report]], None]) -> None:
+        self.loops: dict[str, Loop] = {}
+        self.grids: dict[str, Grid] = {}
         self.rows = 0
-        self.blocks = dict.fromkeys(told, 0)
+        self.blocks: dict[str, int] = {}
         self._deliver = deliver
-        self._wanted = {name: frozenset(loop.signals) for name, loop in told.items()}
+        self._wanted: dict[str, frozenset[str]] = {}
+        for loop in told.values():
+            self.put(Loop(loop), Grid(loop))
+
+    def put(self, loop: Loop, grid: Grid) -> None:
+        """From now on this is the loop of its name."""
+        name = loop.settings.name
+        self.loops[name], self.grids[name] = loop, grid
+        self._wanted[name] = frozenset(loop.settings.signals)
+        self.blocks.setdefault(name, 0)
+
+    def drop(self, name: str) -> None:
+        del self.loops[name], self.grids[name], self._wanted[name], self.blocks[name]
 
     def feed(self, reading: Reading, stamp: float) -> list[str]:
         """Hand a reading to the loops that use it; their names."""
@@ -44,12 +57,12 @@ class Pipeline:
         self.flush(name, stamp)
         report = self.loops[name].silence(seconds, stamp)
         if report is not None:
-            self._deliver(report)
+            self._deliver((report,))
 
     def act(self, name: str, action: Action, *, silent_s: float, stamp: float) -> Report:
         """A person's action on a loop, `silent_s` after its last reading. Raises ActionRefused."""
         report = self.loops[name].act(action, stamp, silent_s=silent_s)
-        self._deliver(report)
+        self._deliver((report,))
         return report
 
     def report(self, name: str, stamp: float) -> Report:
@@ -67,7 +80,10 @@ class Pipeline:
         )
 
     def _advance(self, name: str, blocks: Iterable[Rows]) -> None:
+        reports = []
         for rows in blocks:
             self.rows += len(rows.values)
             self.blocks[name] += 1
-            self._deliver(self.loops[name].advance(rows))
+            reports.append(self.loops[name].advance(rows))
+        if reports:
+            self._deliver(reports)

@@ -69,6 +69,7 @@ def write(path: Path, content: bytes, *, keep: Path | None = None) -> None:
     """
     fresh = path.with_name(path.name + ".new")
     try:
+        path.parent.mkdir(exist_ok=True)
         _write_through(fresh, content)
         if keep is not None and path.exists():
             os.replace(path, keep)

@@ -3,86 +3,81 @@
 from __future__ import annotations
 
 import logging
+import os
 import threading
 import time
 from collections.abc import Callable, Sequence
 from concurrent.futures import Future
 from concurrent.futures import TimeoutError as WaitTimeout
-from dataclasses import replace
+from contextlib import AbstractContextManager, nullcontext
 from pathlib import Path
 from typing import Any
 
 from rtid import __version__
-from rtid.errors import Unavailable, UsageError
+from rtid.errors import ConfigError, RtidError, Unavailable, UsageError
 from rtid.intake.queue import ReadingQueue
 from rtid.intake.reading import Reading
 from rtid.publish import messages
-from rtid.publish.events import EventLog
-from rtid.publish.mqtt import MqttPublisher
 from rtid.service import state_dir
-from rtid.service.complaints import Complaints
 from rtid.service.control import ControlServer
 from rtid.service.control_socket import socket_path
 from rtid.service.desk import Desk
-from rtid.service.intakes import Intake, make_intake, origin
 from rtid.service.notify import Notifier, in_words
-from rtid.service.outlets import Observer, Outlets
+from rtid.service.outlets import Observer
+from rtid.service.parts import Parts
 from rtid.service.pipeline import Pipeline
 from rtid.service.silence import SilenceWatch
-from rtid.service.status import Board
 from rtid.settings import Node
 from rtid.valid_names import one_of
 
 WAIT_S = 0.25  # longest wait for a reading: how late a stop or a silence is noticed
 ANSWER_S = 20.0  # longest wait for the worker's answer: the fit of a baseline may take seconds on a small board
-GOODBYE_S = 2.0  # longest wait for the sources to close
 
 log = logging.getLogger("rtid.service")
 
 
 class Service:
-    """`run()` serves until `stop()`; `stop` and `snapshot` may be called from any thread, `stop` from a signal handler.
+    """`run()` serves until `stop()`; `stop`, `reload`, `snapshot` from any thread, the first two from signal handlers.
 
-    Everything is made in `run`, so a Service that never ran has touched nothing.
+    `reread` reads the configuration anew; it raises RtidError. Everything is made in `run`, so a Service that never ran
+    has touched nothing.
     """
 
-    def __init__(self, node: Node, *, observers: Sequence[Observer] = (), notifier: Notifier | None = None) -> None:
+    def __init__(
+        self, node: Node, *, observers: Sequence[Observer] = (), notifier: Notifier | None = None,
+        reread: Callable[[], Node] | None = None,
+    ) -> None:  # fmt: skip
         self._node = node
         self._observers = tuple(observers)
         self._notifier = notifier or Notifier({})
+        self._reread = reread or (lambda: node)
         self._queue = ReadingQueue()
         self._stopping = threading.Event()
+        self._reloading = threading.Event()
         self._pipeline: Pipeline | None = None
 
     def run(self) -> None:
         """Serve. Raises CannotCreate or Unavailable when the state directory cannot be had."""
         with state_dir.held(self._node.state_dir) as folder:
-            publisher = self._make_publisher()
-            events = EventLog(folder / "events.jsonl")
-            outlets = Outlets(self._node.name, events, publisher=publisher, observers=self._observers)
-            self._pipeline = Pipeline(self._node.loops, outlets.deliver)
-            intakes = self._make_intakes()
-            self._say_start(folder)
-            if publisher is not None:
-                publisher.start(messages.status(self._node.name, stamp=time.time(), loops=self._node.loops))
-            for name in self._node.loops:  # what the broker kept of the last run is not true any more
-                outlets.publish(self._pipeline.report(name, time.time()))
-            now = time.monotonic()
-            silence = SilenceWatch({name: told.stale_after_s for name, told in self._node.loops.items()}, now)
-            board = Board(self._node, intakes, events=events, publisher=publisher, now=now)
-            desk = Desk(self._node.name, outlets, silence=silence, board=board, ask=self._ask)
+            log.info("rtid %s, node %s, state in %s", __version__, self._node.name, folder)
+            parts = Parts(folder, self._node, self._queue, observers=self._observers)
+            self._pipeline = parts.pipeline
             try:
-                with ControlServer(socket_path(folder), desk.answer):
-                    self._serve(self._pipeline, intakes, silence=silence, board=board)
-                self._finish(self._pipeline, outlets)
+                with self._control(folder, parts):
+                    parts.follow(self._node)
+                    self._serve(parts)
+                parts.finish()
             finally:
-                if publisher is not None:
-                    publisher.stop()
+                parts.close()
                 log.info("stopped")
 
     def stop(self) -> None:
         """Ask `run` to end in good order; returns at once."""
         self._stopping.set()
+
+    def reload(self) -> None:
+        """Ask `run` to follow the configuration as it is now; returns at once. A bad one is refused, in the log."""
+        self._reloading.set()
 
     def snapshot(self, loop: str, reason: str) -> dict[str, Any]:
         """The model of now, taken by the worker between two readings. Raises UsageError, Unavailable."""
@@ -113,22 +108,43 @@ class Service:
             undone = "nothing was done" if answer.cancel() else "it may still be done"
             raise Unavailable(f"the service does not answer, {undone}; is it running, is the computer busy?") from None
 
-    def _serve(self, pipeline: Pipeline, intakes: Sequence[Intake], *, silence: SilenceWatch, board: Board) -> None:
-        complaints = Complaints({intake.name: intake.counts for intake in intakes})
-        for intake in intakes:
-            intake.start()
+    def _control(self, folder: Path, parts: Parts) -> AbstractContextManager[object]:
+        """The control socket, unless it would lie in a state directory that cannot be written."""
+        path = socket_path(folder)
+        if path.parent == folder and not os.access(folder, os.W_OK | os.X_OK):
+            log.error("%s: cannot be written to: no control socket is made, `rtid status` will not answer", folder)
+            return nullcontext()
+        desk = Desk(self._node.name, parts.outlets, silence=parts.silence, board=parts.board, ask=self._ask)
+        return ControlServer(path, desk.answer)
+
+    def _serve(self, parts: Parts) -> None:
         self._notifier.ready()
         try:
             while not self._stopping.is_set():
-                self._turn(pipeline, silence)
-                complaints.look(time.monotonic())
-                board.look(pipeline, time.monotonic())
-                self._notifier.status(in_words({name: loop.state for name, loop in pipeline.loops.items()}))
+                if self._reloading.is_set():
+                    self._reload(parts)
+                self._turn(parts.pipeline, parts.silence)
+                parts.tend(time.monotonic())
+                self._notifier.status(in_words({name: loop.state for name, loop in parts.pipeline.loops.items()}))
                 self._notifier.alive(time.monotonic())
         finally:
             self._notifier.stopping()
-            _stop(intakes)
-        self._turn(pipeline, silence)
+            parts.intakes.stop()
+        self._turn(parts.pipeline, parts.silence)
+
+    def _reload(self, parts: Parts) -> None:
+        self._reloading.clear()
+        self._notifier.reloading()
+        try:
+            node = self._reread()
+            _check_same_place(self._node, node)
+            parts.follow(node)
+        except RtidError as error:
+            log.error("the configuration is not taken over, the service goes on with the one before: %s", error)
+        else:
+            self._node = node
+            log.info("the configuration is taken over")
+        self._notifier.ready()
 
     def _turn(self, pipeline: Pipeline, silence: SilenceWatch) -> None:
         """Everything that waits in the queue, then the loops that went without."""
@@ -141,41 +157,9 @@ class Service:
         for name, seconds in silence.due(time.monotonic()):
             pipeline.silence(name, seconds=seconds, stamp=time.time())
 
-    def _finish(self, pipeline: Pipeline, outlets: Outlets) -> None:
-        for name in pipeline.loops:
-            pipeline.flush(name, time.time())
-            outlets.publish(replace(pipeline.report(name, time.time()), due=True))
 
-    def _make_publisher(self) -> MqttPublisher | None:
-        node = self._node
-        if node.broker is None:
-            return None
-        return MqttPublisher(node.broker, node=node.name, client_id=f"rtid-{node.name}")
-
-    def _make_intakes(self) -> list[Intake]:
-        node = self._node
-        return [
-            make_intake(source, self._queue, broker=node.broker, client_id=f"rtid-{node.name}-{source.name}")
-            for source in node.sources.values()
-        ]
-
-    def _say_start(self, folder: Path) -> None:
-        node = self._node
-        log.info("rtid %s, node %s", __version__, node.name)
-        for source in node.sources.values():
-            log.info("source %s: %s, %s", source.name, origin(source), source.decode)
-        for loop in node.loops.values():
-            log.info("loop %s: %s -> %s every %g s", loop.name, ", ".join(loop.inputs), loop.output, loop.period_s)
-        log.info("state in %s", folder)
-        if node.broker is not None:
-            log.info("broker %s:%d, topics under %s/", node.broker.host, node.broker.port, node.broker.prefix)
-
-
-def _stop(intakes: Sequence[Intake]) -> None:
-    """All at once, and none for longer than two seconds: a broker that does not answer must not delay the goodbye."""
-    endings = [threading.Thread(target=intake.stop, name=f"{intake.name}-end", daemon=True) for intake in intakes]
-    for ending in endings:
-        ending.start()
-    deadline = time.monotonic() + GOODBYE_S
-    for ending in endings:
-        ending.join(max(0.0, deadline - time.monotonic()))
+def _check_same_place(before: Node, after: Node) -> None:
+    """Raises ConfigError."""
+    for what, old, new in (("node", before.name, after.name), ("state_dir", before.state_dir, after.state_dir)):
+        if new != old:
+            raise ConfigError(f"{what} is {new!r} now and was {old!r}: that needs a restart of the service")

@@ -13,6 +13,12 @@ class SilenceWatch:
         self._heard = dict.fromkeys(self._after, now)
         self._said = dict.fromkeys(self._after, now)
 
+    def follow(self, stale_after_s: Mapping[str, float], now: float) -> None:
+        """Watch these from now on; those that are watched already keep their times."""
+        self._after = dict(stale_after_s)
+        self._heard = {name: self._heard.get(name, now) for name in self._after}
+        self._said = {name: self._said.get(name, now) for name in self._after}
+
     def heard(self, loop: str, now: float) -> None:
         self._heard[loop] = self._said[loop] = now
 

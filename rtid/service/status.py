@@ -25,22 +25,21 @@ class Board:
     `now` is the monotonic clock, `stamp` a label in seconds since 1970.
     """
 
-    def __init__(
-        self,
-        node: Node,
-        intakes: Sequence[Intake],
-        *,
-        events: EventLog,
-        publisher: MqttPublisher | None,
-        now: float,
-    ) -> None:
+    def __init__(self, node: Node, events: EventLog, now: float) -> None:
         self._node = node
-        self._intakes = {intake.name: intake for intake in intakes}
         self._events = events
-        self._publisher = publisher
         self._start = now
-        self._rates = {name: Rate() for name in self._intakes}
+        self._intakes: dict[str, Intake] = {}
+        self._publisher: MqttPublisher | None = None
+        self._rates: dict[str, Rate] = {}
         self._blocks: dict[str, tuple[int, float]] = {}  # of each loop: how many there were, and since when
+
+    def follow(self, node: Node, intakes: Sequence[Intake], publisher: MqttPublisher | None) -> None:
+        """Tell of these from now on."""
+        before, self._intakes = self._intakes, {intake.name: intake for intake in intakes}
+        stay = {name for name, intake in self._intakes.items() if before.get(name) is intake}
+        self._rates = {name: self._rates[name] if name in stay else Rate() for name in self._intakes}
+        self._node, self._publisher = node, publisher
 
     def look(self, pipeline: Pipeline, now: float) -> None:
         for name, intake in self._intakes.items():

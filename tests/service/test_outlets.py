@@ -3,15 +3,16 @@
 from __future__ import annotations
 
 import json
-from collections.abc import Mapping
+import resource
+from collections.abc import Iterator, Mapping
+from contextlib import contextmanager
 from pathlib import Path
 from typing import Any
 
 import pytest
 
-from rtid.errors import InputOutputError
-from rtid.publish.events import EventLog
 from rtid.report import Report, Transition
+from rtid.service.memory import Memory
 from rtid.service.outlets import Outlets
 
 
@@ -37,18 +38,6 @@ class Failing(Collector):
         raise RuntimeError("no")
 
 
-class FullDisk(EventLog):
-    """An event list whose disk is full while `full` is true."""
-
-    full = False
-
-    def append(self, transition: Transition, **options: Any) -> dict[str, Any]:
-        if self.full:
-            self.sequence += 1
-            raise InputOutputError("events.jsonl: cannot be written (No space left on device)")
-        return super().append(transition, **options)
-
-
 def report(*transitions: Transition) -> Report:
     return Report(
         loop="belt",
@@ -72,49 +61,73 @@ def stored(folder: Path) -> list[dict[str, Any]]:
     return [json.loads(line) for line in (folder / "events.jsonl").read_text().splitlines()]
 
 
+@contextmanager
+def full_disk() -> Iterator[None]:
+    """Every write fails."""
+    soft, hard = resource.getrlimit(resource.RLIMIT_FSIZE)
+    resource.setrlimit(resource.RLIMIT_FSIZE, (0, hard))
+    try:
+        yield
+    finally:
+        resource.setrlimit(resource.RLIMIT_FSIZE, (soft, hard))
+
+
 def test_an_event_is_on_the_disk_when_it_is_told(tmp_path: Path) -> None:
     class Reader(Collector):
         def event(self, payload: Mapping[str, Any], transition: Transition) -> None:
             self.events.append(stored(tmp_path)[-1])
 
     reader = Reader()
-    Outlets("node", EventLog(tmp_path / "events.jsonl"), publisher=None, observers=[reader]).deliver(report(drift()))
+    Outlets(Memory(tmp_path, "node"), observers=[reader]).deliver([report(drift())])
     assert [event["alarm"] for event in reader.events] == ["plant_drift"]
 
 
 def test_an_observer_that_raises_is_passed_over(tmp_path: Path, caplog: pytest.LogCaptureFixture) -> None:
     good = Collector()
-    outlets = Outlets("node", EventLog(tmp_path / "events.jsonl"), publisher=None, observers=[Failing(), good])
-    outlets.deliver(report(drift()))
+    outlets = Outlets(Memory(tmp_path, "node"), observers=[Failing(), good])
+    outlets.deliver([report(drift())])
     assert len(good.reports) == len(good.events) == 1
     assert "an observer failed and was passed over: RuntimeError: no" in caplog.text
 
 
 def test_a_full_disk_raises_the_storage_alarm_once_and_events_go_on(tmp_path: Path) -> None:
-    events, seen = FullDisk(tmp_path / "events.jsonl"), Collector()
-    outlets = Outlets("node", events, publisher=None, observers=[seen])
-    events.full = True
-    outlets.deliver(report(drift("first"), drift("second")))
+    seen = Collector()
+    outlets = Outlets(Memory(tmp_path, "node"), observers=[seen])
+    with full_disk():
+        outlets.deliver([report(drift("first"))])
+        outlets.deliver([report(drift("second"))])
     told = [(e["loop"], e["alarm"], e["transition"]) for e in seen.events]
     assert told == [
         ("belt", "plant_drift", "active"),
         ("_node", "storage", "active"),
         ("belt", "plant_drift", "active"),
     ]
-    assert "No space left" in seen.events[1]["text"]
-    sequences = [e["sequence"] for e in seen.events]
-    assert sequences == sorted(set(sequences))
+    assert "make room on the disk" in seen.events[1]["text"]
+    assert [e["sequence"] for e in seen.events] == [1, 2, 3]
 
 
-def test_the_storage_alarm_clears_when_the_disk_takes_events_again(tmp_path: Path) -> None:
-    events, seen = FullDisk(tmp_path / "events.jsonl"), Collector()
-    outlets = Outlets("node", events, publisher=None, observers=[seen])
-    events.full = True
-    outlets.deliver(report(drift()))
-    events.full = False
-    outlets.deliver(report(drift()))
-    assert [(e["alarm"], e["transition"]) for e in stored(tmp_path)] == [
-        ("plant_drift", "active"),
-        ("storage", "cleared"),
+def test_the_storage_alarm_clears_when_the_disk_takes_all_that_waited(tmp_path: Path) -> None:
+    seen = Collector()
+    outlets = Outlets(Memory(tmp_path, "node"), observers=[seen])
+    with full_disk():
+        outlets.deliver([report(drift())])
+    outlets.deliver([report(drift())])
+    assert [(e["sequence"], e["alarm"], e["transition"]) for e in stored(tmp_path)] == [
+        (1, "plant_drift", "active"),
+        (2, "storage", "active"),
+        (3, "plant_drift", "active"),
+        (4, "storage", "cleared"),
     ]
     assert seen.events[-1]["loop"] == "_node"
+
+
+def test_a_storage_alarm_that_a_killed_service_left_is_cleared(tmp_path: Path) -> None:
+    memory = Memory(tmp_path, "node")
+    with full_disk():
+        Outlets(memory).deliver([report(drift())])
+    memory.events.write()
+    seen = Collector()
+    outlets = Outlets(Memory(tmp_path, "node"), observers=[seen])
+    outlets.watch_storage()
+    outlets.watch_storage()
+    assert [(e["alarm"], e["transition"]) for e in seen.events] == [("storage", "cleared")]
