@@ -17,6 +17,7 @@ TOPICS = (
     "topics",
     "model",
     "drift",
+    "operation",
     "replay",
     "commands",
     "safety",

@@ -23,6 +23,16 @@ COMMANDS: dict[str, str] = {
     "listen": "show the decoded readings of the sources, for commissioning",
     "run": "the service, in the foreground",
     "replay": "the same pipeline over recorded data, as fast as it goes",
+    "status": "how the running service is, its sources and its loops",
+    "watch": "the loops of the running service, live in the terminal",
+    "snapshot": "the model of now, with its validation, as a file",
+    "rebaseline": "learn a new baseline, list the old ones, or restore one",
+    "hold": "hold a loop for a while: nothing is learnt or judged",
+    "resume": "end a hold before its time",
+    "ack": "acknowledge an alarm",
+    "shelve": "hear nothing of an alarm for a while",
+    "unshelve": "hear of a shelved alarm again before its time",
+    "note": "leave a remark in the list of events",
     "guide": "the manual, offline",
 }
 INTERNAL_ERROR = 70
@@ -90,7 +100,7 @@ def _run(command: str | None, arguments: list[str]) -> int:
 
 
 def _top_parser() -> Parser:
-    lines = "\n".join(f"  {name:<8} {what}" for name, what in COMMANDS.items())
+    lines = "\n".join(f"  {name:<10} {what}" for name, what in COMMANDS.items())
     parser = Parser(
         prog="rtid",
         usage="rtid [-h] [--version] [--debug] COMMAND ...",

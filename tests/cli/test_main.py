@@ -14,22 +14,7 @@ from rtid.cli import main as main_module
 from rtid.cli.main import COMMANDS, main
 from rtid.errors import ConfigError, MissingInput, RtidError, UsageError
 
-NOT_IN_THIS_VERSION = (
-    "survey",
-    "status",
-    "watch",
-    "snapshot",
-    "retune",
-    "rebaseline",
-    "hold",
-    "resume",
-    "ack",
-    "shelve",
-    "unshelve",
-    "note",
-    "excite",
-    "report",
-)
+NOT_IN_THIS_VERSION = ("survey", "retune", "excite", "report")
 
 
 def rtid(*arguments: str) -> subprocess.CompletedProcess[str]:
