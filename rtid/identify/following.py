@@ -38,8 +38,8 @@ class FollowingEstimator(Kept):
     """`structure.Estimator` for an output-error model. `memory`: rows after which a datum counts 1/e."""
 
     KEPT = (
-        "_fit", "_covariance", "_spread", "_prior", "_weight", "_last_psi", "_blocks", "invalid", "_predictor", "_whitener",
-        "_noise", "_leftover", "_forgetting",
+        "_fit", "_covariance", "_spread", "_prior", "_weight", "_last_psi", "_blocks", "invalid", "_predictor",
+        "_whitener", "_noise", "_leftover", "_forgetting",
     )  # fmt: skip
 
     def __init__(self, plant: Plant, fit: Fit, record: Record, *, memory: float) -> None:
