@@ -6,13 +6,15 @@ from dataclasses import dataclass
 
 import pytest
 from hypothesis import given
+from hypothesis import settings as hypothesis_settings
 from hypothesis import strategies as st
 
 from rtid.judge.alarms import AlarmBook, Finding
 from rtid.report import Transition
 from rtid.settings import AlarmSetting
 
-SIGNALS = ("drive.volts", "drive.speed", None)
+SIGNALS = ("drive.speed", None)
+seeded = hypothesis_settings(derandomize=True)
 
 
 @dataclass(frozen=True)
@@ -32,8 +34,9 @@ def some_finding(draw: st.DrawFn) -> Finding:
     return Finding(draw(st.booleans()), "words", quantity, *known)
 
 
+told_or_acknowledged = st.one_of(some_finding(), some_finding(), some_finding(), st.none())
 steps = st.lists(
-    st.builds(Step, st.floats(0.0, 20.0), st.sampled_from(SIGNALS), st.none() | some_finding()), min_size=1, max_size=60
+    st.builds(Step, st.floats(0.0, 20.0), st.sampled_from(SIGNALS), told_or_acknowledged), min_size=15, max_size=60
 )
 settings = st.builds(
     AlarmSetting,
@@ -54,6 +57,7 @@ def play(setting: AlarmSetting, story: list[Step]) -> tuple[AlarmBook, list[Tran
     return book, list(book.take_transitions())
 
 
+@seeded
 @given(settings, steps)
 def test_active_and_cleared_alternate_and_never_repeat(setting: AlarmSetting, story: list[Step]) -> None:
     book, told = play(setting, story)
@@ -64,6 +68,7 @@ def test_active_and_cleared_alternate_and_never_repeat(setting: AlarmSetting, st
         assert (signal in standing) == (len(ends) % 2 == 1)
 
 
+@seeded
 @given(settings, steps)
 def test_updates_are_told_only_while_an_alarm_stands(setting: AlarmSetting, story: list[Step]) -> None:
     _, told = play(setting, story)
@@ -74,12 +79,7 @@ def test_updates_are_told_only_while_an_alarm_stands(setting: AlarmSetting, stor
             stands = {"active": True, "cleared": False}.get(str(t.transition), stands)
 
 
-not_raised = pytest.mark.xfail(
-    strict=True, reason="AlarmBook.acknowledge takes an alarm that only waits for its on-delay and was never raised"
-)
-
-
-@not_raised
+@seeded
 @given(settings, steps)
 def test_only_what_was_raised_is_acknowledged_and_only_once(setting: AlarmSetting, story: list[Step]) -> None:
     _, told = play(setting, story)
@@ -93,7 +93,10 @@ def test_only_what_was_raised_is_acknowledged_and_only_once(setting: AlarmSettin
                 open_to_acknowledge = True
 
 
-@not_raised
+@pytest.mark.xfail(
+    strict=True, reason="acknowledge empties the retained message of an alarm that stands through its off-delay"
+)
+@seeded
 @given(settings, steps)
 def test_the_retained_message_is_emptied_exactly_when_cleared_and_acknowledged(
     setting: AlarmSetting, story: list[Step]
@@ -101,14 +104,13 @@ def test_the_retained_message_is_emptied_exactly_when_cleared_and_acknowledged(
     """The last word on an alarm is what the broker keeps."""
     _, told = play(setting, story)
     for signal in SIGNALS:
-        mine = [t for t in told if t.signal == signal]
-        if mine:
-            active = [i for i, t in enumerate(mine) if t.transition == "active"]
-            since = mine[active[-1] :] if active else mine
-            over = {"cleared", "acknowledged"} <= {t.transition for t in since}
-            assert mine[-1].retain == (not over)
+        since: set[str] = set()
+        for t in (t for t in told if t.signal == signal):
+            since = {"active"} if t.transition == "active" else since | {str(t.transition)}
+            assert t.retain != ({"cleared", "acknowledged"} <= since)
 
 
+@seeded
 @given(steps)
 def test_delays_are_kept(story: list[Step]) -> None:
     setting = AlarmSetting(on_delay_s=5.0, off_delay_s=30.0)

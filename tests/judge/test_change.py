@@ -14,10 +14,9 @@ from rtid.identify.output_error import OutputError
 from rtid.identify.structure import Fit, Structure
 from rtid.judge.baseline import Baseline
 from rtid.judge.change import Judged, QuantityChange, leader, surest
-from rtid.loop import tolerances_of
-from rtid.settings import Tolerance
 
-TOLERANCES = tolerances_of(Tolerance(gain_pct=10.0, time_constant_pct=20.0, dead_time_pct=30.0))
+DYNAMICS = ("time_constant_1", "time_constant_2", "natural_frequency", "damping_ratio")
+TOLERANCES = {"gain": 0.1, "dead_time": 0.3} | dict.fromkeys(DYNAMICS, 0.2)
 PERIOD = 1.0
 ONE = OutputError(1, PERIOD, (0.0, 10.0))
 TWO = OutputError(2, PERIOD, (0.0, 10.0))

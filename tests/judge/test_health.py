@@ -68,14 +68,7 @@ def test_an_alarm_decides_while_watching_and_gives_the_reason(name: str, expecte
     assert health("watching", alarm(name)) == (expected, f"text of {name}")
 
 
-def stands_beside_good(name: str) -> pytest.MarkDecorator:
-    return pytest.mark.xfail(strict=True, reason=f"health_of has no level for {name}: it stays good beside that alarm")
-
-
-WITHOUT_LEVEL = [pytest.param(name, marks=stands_beside_good(name)) for name in sorted({*DEFAULT_ALARMS} - {*ALARMS})]
-
-
-@pytest.mark.parametrize("name", [*ALARMS, *WITHOUT_LEVEL])
+@pytest.mark.parametrize("name", DEFAULT_ALARMS)
 def test_no_alarm_leaves_a_good_health(name: str) -> None:
     assert health("watching", alarm(name))[0] != "good"
 
