@@ -82,6 +82,10 @@ class RunningRtid:
     def end(self, number: signal.Signals = signal.SIGTERM, seconds: float = 5.0) -> int:
         """Send a signal and wait for the exit code: at most as long as the service may take."""
         self._process.send_signal(number)
+        return self.ended(seconds)
+
+    def ended(self, seconds: float = 5.0) -> int:
+        """Wait for the exit code of a process that ends by itself."""
         code = self._process.wait(timeout=seconds)
         for reader in self._readers:
             reader.join()
