@@ -58,7 +58,7 @@ def test_the_unit_waits_for_readiness_and_watches_over_the_worker(unit: Path) ->
     assert int(said["WatchdogSec"][0]) >= 30
     assert said["Restart"] == ["on-failure"]
     assert said["StartLimitIntervalSec"] == ["0"]
-    assert said["ExecReload"] == ["/bin/kill -HUP $MAINPID"]
+    assert said["ExecReload"] == ["/bin/sh -c 'kill -HUP $MAINPID'"]
     assert said["Environment"] == ["OPENBLAS_NUM_THREADS=1"]
 
 

@@ -130,6 +130,23 @@ def test_a_process_is_ready_lives_with_and_without_data_and_stops_in_order(tmp_p
         assert manager.messages[-1] == {"STOPPING": "1"}
 
 
+def test_sighup_is_a_reload_that_ends_whether_the_configuration_is_good_or_bad(tmp_path: Path) -> None:
+    """For systemd a reload lasts from RELOADING to READY: one that never ended would hang `systemctl reload`."""
+    path = configure(tmp_path)
+    with NotifySocket(str(tmp_path / "notify")) as manager:
+        with RunningRtid("run", path, variables=manager.variables) as service:
+            manager.wait_for("READY")
+            os.kill(service.pid, signal.SIGHUP)
+            manager.wait_for("READY", times=2)
+            path.write_text("node: [")
+            os.kill(service.pid, signal.SIGHUP)
+            manager.wait_for("READY", times=3)
+            service.wait_for_line(f"{path}:1")
+            assert service.end(signal.SIGTERM) == 0
+        manager.wait_for("STOPPING")
+        assert manager.order == ["READY", "RELOADING", "READY", "RELOADING", "READY", "STOPPING"]
+
+
 class Threads(Notifier):
     """Remembers who called: as a notifier the feeder of the watchdog, as an observer the worker of the loops."""
 
