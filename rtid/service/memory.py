@@ -114,8 +114,10 @@ class Memory:
             self._retry_at = now + RETRY_S
 
     def save_all(self) -> None:
+        """All that is not on the disk."""
         for name in self._loops:
             self._save(name)
+        self._write_events()
 
     def _save(self, loop: str) -> None:
         try:

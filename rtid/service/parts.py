@@ -77,8 +77,9 @@ class Parts:
             self.pipeline.flush(name, time.time())
             self._outlets.publish(replace(self.pipeline.report(name, time.time()), due=True))
         self._memory.save_all()
+        self._outlets.watch_storage()
         if self._memory.failure:
-            log.error("the state of now is not stored: %s", self._memory.failure)
+            log.error("the service ends and its state of now is not stored: %s", self._memory.failure)
 
     def close(self) -> None:
         """Say goodbye to the broker."""

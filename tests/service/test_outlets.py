@@ -3,9 +3,7 @@
 from __future__ import annotations
 
 import json
-import resource
-from collections.abc import Iterator, Mapping
-from contextlib import contextmanager
+from collections.abc import Mapping
 from pathlib import Path
 from typing import Any
 
@@ -14,6 +12,7 @@ import pytest
 from rtid.report import Report, Transition
 from rtid.service.memory import Memory
 from rtid.service.outlets import Outlets
+from tests.support.disk import full_disk
 
 
 class Collector:
@@ -59,17 +58,6 @@ def drift(text: str = "gain has changed") -> Transition:
 
 def stored(folder: Path) -> list[dict[str, Any]]:
     return [json.loads(line) for line in (folder / "events.jsonl").read_text().splitlines()]
-
-
-@contextmanager
-def full_disk() -> Iterator[None]:
-    """Every write fails."""
-    soft, hard = resource.getrlimit(resource.RLIMIT_FSIZE)
-    resource.setrlimit(resource.RLIMIT_FSIZE, (0, hard))
-    try:
-        yield
-    finally:
-        resource.setrlimit(resource.RLIMIT_FSIZE, (soft, hard))
 
 
 def test_an_event_is_on_the_disk_when_it_is_told(tmp_path: Path) -> None:
