@@ -5,7 +5,7 @@ from __future__ import annotations
 from dataclasses import dataclass
 
 import pytest
-from hypothesis import given
+from hypothesis import Phase, given
 from hypothesis import settings as hypothesis_settings
 from hypothesis import strategies as st
 
@@ -14,7 +14,7 @@ from rtid.report import Transition
 from rtid.settings import AlarmSetting
 
 SIGNALS = ("drive.speed", None)
-seeded = hypothesis_settings(derandomize=True)
+seeded = hypothesis_settings(derandomize=True, phases=[Phase.generate])
 
 
 @dataclass(frozen=True)

@@ -28,8 +28,8 @@ ROWS = 1200
 
 
 def seeds(scenario: str) -> range:
-    """Two runs each, but one of order 2, whose fits take their time."""
-    return range(1) if scenario.startswith("order 2") else range(2)
+    """Two runs where the fits are quick, else one."""
+    return range(2) if scenario == "equation error" else range(1)
 
 
 @dataclass(frozen=True)
@@ -117,7 +117,7 @@ def test_half_the_tolerance_is_a_shift_at_most(structure: str, part: dict[str, f
 
 def test_no_change_is_neither_and_stays_good() -> None:
     scenario = SCENARIOS["order 1"]
-    for seed in seeds("order 1"):
+    for seed in range(3):
         reports = scenario.goes_on(ONE, ROWS, seed=seed)
         assert transitions(reports) == []
         assert {report.health for report in reports} == {"good"}
@@ -145,11 +145,9 @@ not_refitted = pytest.mark.xfail(
     ("quantity", "later", "pct"),
     [
         pytest.param("gain", changed(ONE, gain=8.0), 300.0, id="gain times 4"),
-        pytest.param("gain", changed(ONE, gain=0.5), -75.0, id="gain over 4"),
         pytest.param("gain", changed(ONE, gain=0.2), -90.0, id="gain over 10", marks=not_refitted),
         pytest.param("gain", changed(ONE, gain=0.0), -100.0, id="gain lost", marks=not_refitted),
         pytest.param("time_constant_1", changed(ONE, slower=4.0), 300.0, id="time constant times 4"),
-        pytest.param("time_constant_1", changed(ONE, slower=0.25), -75.0, id="time constant over 4"),
         pytest.param("dead_time", changed(ONE, dead_time_s=0.0), -100.0, id="dead time gone"),
         pytest.param("dead_time", changed(ONE, dead_time_s=8 * T), 300.0, id="dead time + 6 rows"),
     ],
