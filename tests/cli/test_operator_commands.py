@@ -85,8 +85,9 @@ def test_a_shelved_alarm_is_not_heard_and_its_end_is_said(served: Served) -> Non
     loop = served.loop()
     assert [shelved["alarm"] for shelved in loop["shelved"]] == ["data_gap"]
     assert "data_gap is shelved until" in loop["reason"]
+    before = len(served.events())
     served.stream(100, skip=100)
-    assert last_event(served) == event
+    assert served.events()[before:] == []
 
     assert served.run("unshelve", "belt", "--alarm", "data_gap", "--reason", "done").code == 0
     assert (last_event(served)["transition"], served.loop()["shelved"]) == ("unshelved", [])

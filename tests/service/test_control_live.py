@@ -21,7 +21,7 @@ from rtid.report import Report, Transition
 from rtid.service import service as service_module
 from rtid.service.control_request import FIELDS
 from rtid.service.service import Service
-from tests.support.control import answers, connect, do
+from tests.support.control import answers, connect, do, listens
 from tests.support.plant_lines import configure
 from tests.support.served import Served
 from tests.support.wait import wait_until
@@ -139,7 +139,7 @@ def test_what_the_worker_did_not_come_to_in_time_is_not_done_later(
     running.start()
     path = tmp_path / "state" / "control.sock"
     try:
-        wait_until(path.exists, what="the socket")
+        wait_until(lambda: listens(path), what="the socket")
         first = do(path, do="note", loop="belt", text="first", by="Kim")
         assert busy.entered.is_set()
         late = do(path, do="note", loop="belt", text="late", by="Kim")

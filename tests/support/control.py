@@ -13,8 +13,21 @@ PATIENCE_S = 15.0
 def connect(path: Path) -> socket.socket:
     client = socket.socket(socket.AF_UNIX, socket.SOCK_STREAM)
     client.settimeout(PATIENCE_S)
-    client.connect(str(path))
+    try:
+        client.connect(str(path))
+    except OSError:
+        client.close()
+        raise
     return client
+
+
+def listens(path: Path) -> bool:
+    """A service has made its socket and takes connections."""
+    try:
+        connect(path).close()
+    except OSError:
+        return False
+    return True
 
 
 def answers(path: Path, data: bytes) -> list[dict[str, Any]]:

@@ -57,12 +57,13 @@ class Served:
         self._board.__exit__(kind, error, at)
 
     def stream(self, rows: int, *, skip: int = 0) -> None:
-        """So many more rows of the plant, after `skip` that are missing; returns when they have been read."""
+        """So many more rows of the plant, after `skip` that are missing; returns when the worker has taken them."""
         self._rows += skip
         self._board.stream(plant_rows(rows, first=self._rows, seed=1 + self._rows))
         self._rows += rows
         self._sent += rows
         wait_until(lambda: self.source()["messages"] >= self._sent - 1, 30.0, what="the rows")  # the first may be torn
+        self.status()  # asked after they were read, so it is answered after they were taken
 
     def garble(self, line: bytes) -> None:
         """A line that is none of the plant's."""
