@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import fcntl
+import json
 import os
 import re
 import signal
@@ -17,7 +18,7 @@ from pathlib import Path
 import pytest
 
 from rtid.cli.status_words import WIDTH
-from tests.support.broker import Broker
+from tests.support.broker import Broker, Listener
 from tests.support.payloads import check
 from tests.support.process import ENVIRONMENT, RunningRtid
 from tests.support.served import Served
@@ -132,6 +133,14 @@ def test_a_stale_loop_its_alarm_and_its_broker(tmp_path: Path, broker: Broker) -
         wait_until(lambda: served.status()["broker"]["connected"], what="the broker")
         check(served.status())
         assert f"127.0.0.1:{broker.port}, connected" in served.run("status").out
+
+
+def test_a_snapshot_that_is_asked_for_is_published_as_well(tmp_path: Path, broker: Broker) -> None:
+    topic = "rtid/test-node/belt/snapshot"
+    with Listener(broker.port, topic) as listener, Served(tmp_path, broker=broker.port) as served:
+        wait_until(lambda: served.status()["broker"]["connected"], what="the broker")
+        shown = json.loads(served.run("snapshot", "belt", "--reason", "weekly").out)
+        assert json.loads(listener.wait_for(lambda message: message.topic == topic).payload) == shown
 
 
 def test_watch_once_is_one_table(served: Served) -> None:
