@@ -11,6 +11,7 @@ from rtid.valid_names import one_of
 
 TOPICS = (
     "start",
+    "install",
     "configuration",
     "serial",
     "mqtt",
