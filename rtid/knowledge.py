@@ -21,7 +21,7 @@ from rtid.judge.learning import Learner
 from rtid.judge.watch import Watch
 from rtid.kept import Kept
 from rtid.model import snapshot as snapshots
-from rtid.model.quantities import quantities, units_of, unknown
+from rtid.model.quantities import names_of, quantities, units_of, unknown
 from rtid.model.validation import RecentRows
 from rtid.report import Drift, Quantity, Transition
 from rtid.settings import Loop as LoopSettings
@@ -46,8 +46,9 @@ class Knowledge(Kept):
         self._columns = len(settings.inputs)
         self._output = settings.signals.index(settings.output)
         self._structure = structure_of(settings)
-        self._units = units_of(settings.units.get(settings.inputs[0], ""), settings.units.get(settings.output, ""))
-        self._tolerances = tolerances_of(settings.tolerance)
+        units = settings.units
+        self._units = units_of([units.get(name, "") for name in settings.inputs], units.get(settings.output, ""))
+        self._tolerances = tolerances_of(settings.tolerance, len(settings.inputs))
         self._memory = settings.memory_s / settings.period_s
         self._learner: Learner | None = self._new_learner()
         self._estimator: Estimator | None = None
@@ -94,7 +95,7 @@ class Knowledge(Kept):
     def quantities(self) -> dict[str, Quantity]:
         fit = self._fit
         if fit is None:
-            return unknown(self._settings.model.order, self._units)
+            return unknown(names_of(self._settings.model.order, self._columns), self._units)
         return quantities(self._structure, fit, self._units, output_shift=self.output_shift)
 
     def drift(self) -> Drift:
@@ -225,14 +226,18 @@ class Knowledge(Kept):
 
 def structure_of(settings: LoopSettings) -> Structure:
     model = settings.model
-    kind = EquationError if model.structure == "equation_error" else OutputError
-    return kind(model.order, settings.period_s, model.dead_time_s)
+    if model.structure == "equation_error":
+        return EquationError(model.order, settings.period_s, model.dead_time_s)
+    return OutputError(model.order, settings.period_s, model.dead_time_s, inputs=len(settings.inputs))
 
 
-def tolerances_of(tolerance: Tolerance) -> dict[str, float]:
+def tolerances_of(tolerance: Tolerance, inputs: int = 1) -> dict[str, float]:
     """Fraction of each quantity's baseline value."""
     time_constant = tolerance.time_constant_pct / 100.0
+    later = range(2, inputs + 1)
     return {
+        **{f"gain_{i}": tolerance.gain_pct / 100.0 for i in later},
+        **{f"dead_time_{i}": tolerance.dead_time_pct / 100.0 for i in later},
         "gain": tolerance.gain_pct / 100.0,
         "time_constant_1": time_constant,
         "time_constant_2": time_constant,

@@ -11,7 +11,7 @@ import pytest
 from rtid import settings
 from rtid.judge import wording
 from rtid.loop import Loop
-from rtid.model.quantities import NAMES
+from rtid.model.quantities import names_of
 from rtid.plants.linear import LinearPlant, first_order, second_order, simulate
 from rtid.report import Report
 from tests.support.plants import (
@@ -117,7 +117,7 @@ def test_the_names_of_the_quantities_never_vary(order: int) -> None:
     model = settings.Model(order=order, dead_time_s=(0.0, 2.0))
     loop = told(model=model, baseline=settings.Baseline(after_s=600 * T))
     plant = PLANT if order == 1 else second_order(2.0, 0.25 / T, 0.9, dead_time_s=2 * T, noise=0.2)
-    assert {tuple(r.quantities) for r in lifetime(loop, 1200, plant)} == {NAMES[order]}
+    assert {tuple(r.quantities) for r in lifetime(loop, 1200, plant)} == {names_of(order, 1)}
 
 
 def test_units_come_from_the_signals() -> None:

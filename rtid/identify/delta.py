@@ -9,11 +9,15 @@ from rtid.identify.structure import Fit, Structure
 
 Array = NDArray[np.float64]
 
-LINEAR = ("dead_time", "offset")  # of all other quantities the logarithm of the size is estimated
+
+def is_linear(name: str) -> bool:
+    """Dead times, offset and the gains of later inputs; of all others the logarithm of the size is estimated."""
+    return name == "offset" or name.startswith(("dead_time", "gain_"))
+
 
 
 def quantity_jacobian(structure: Structure, fit: Fit) -> tuple[dict[str, float], Array]:
-    """Values at the fit, and ∂quantity/∂θ, (q, p): of ln|value|, but of the value itself for the names in LINEAR.
+    """Values at the fit, and ∂quantity/∂θ, (q, p): of ln|value|, but of the value itself where `is_linear`.
 
     Central differences with steps of 1e-4 standard errors, or 1e-6 where that is unknown. Rows of quantities that do
     not exist at the fit are NaN.
@@ -34,4 +38,4 @@ def quantity_jacobian(structure: Structure, fit: Fit) -> tuple[dict[str, float],
 
 def _scaled(values: dict[str, float]) -> Array:
     with np.errstate(divide="ignore", invalid="ignore"):
-        return np.array([v if name in LINEAR else np.log(np.abs(v)) for name, v in values.items()])
+        return np.array([v if is_linear(name) else np.log(np.abs(v)) for name, v in values.items()])

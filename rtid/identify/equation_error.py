@@ -21,6 +21,7 @@ Array = NDArray[np.float64]
 Mask = NDArray[np.bool_]
 
 MIN_ROWS = 200
+_ABSURD = 1e100  # its square still has a place among the numbers
 _FAR = 1e6
 START_ERROR = 0.2  # standard error of ln|gain| at which an estimate is worth publishing
 
@@ -42,8 +43,8 @@ class Regressors(Kept):
     def run(self, inputs: Array, output: Array, ok: Mask) -> tuple[Array, Mask]:
         """inputs, output, ok: (m,). Regressors (c, m, p) and which rows have their whole past (m,)."""
         m, depth = len(output), self._depth
-        u = np.concatenate((self._inputs, inputs))
-        present = ok & np.isfinite(output)
+        u = np.concatenate((self._inputs, np.where(np.abs(inputs) < _ABSURD, inputs, 0.0)))
+        present = ok & (np.abs(output) < _ABSURD) & (np.abs(inputs) < _ABSURD)
         y = np.concatenate((self._output, np.where(present, output, 0.0)))
         known = np.concatenate((self._ok, present))
         rows = np.ones((len(self._delays), m, self.p))
@@ -92,6 +93,10 @@ class EquationError:
         stack, regressors = self._stack(record)
         return BankEstimator(self, stack, regressors, fit=fit, memory=memory)
 
+    def relative_gain(self, record: Record, fit: Fit) -> tuple[float, float] | None:
+        """Its parameters do not part gain from dynamics."""
+        return None
+
     def settling_rows(self, fit: Fit) -> int:
         slowest = self.slowest(fit)
         return fit.delay + math.ceil(5.0 * slowest / self.period)
@@ -109,13 +114,9 @@ class EquationError:
         offset = float(theta[-1]) / at_one if at_one else math.nan
         return values | {"dead_time": fit.delay * self.period, "offset": offset}
 
-    def transfer(self, fit: Fit) -> tuple[Array, Array, int]:
+    def transfer(self, fit: Fit) -> list[tuple[Array, Array, int]]:
         n = self.order
-        return (
-            np.concatenate(([0.0], fit.theta[n : 2 * n])),
-            np.concatenate(([1.0], fit.theta[:n])),
-            fit.delay,
-        )
+        return [(np.concatenate(([0.0], fit.theta[n : 2 * n])), np.concatenate(([1.0], fit.theta[:n])), fit.delay)]
 
     def _prior(self, record: Record) -> Array:
         """Prior deviation of every parameter, per unit of output: far beyond anything that a record can show."""
@@ -207,7 +208,7 @@ class BankEstimator(Kept):
         return error, error, good
 
     def informed(self) -> Mask:
-        return np.full(self._stack.p, self._quiet_rows < self._memory)
+        return np.full(self._stack.p, self._quiet_rows == 0)
 
     def restart(self, inputs: Array) -> None:
         self._regressors.break_off()

@@ -11,7 +11,7 @@ from dataclasses import replace
 import numpy as np
 from numpy.typing import NDArray
 
-from rtid.identify.forgetting import SubspaceForgetting
+from rtid.identify.forgetting import SubspaceForgetting, informed
 from rtid.identify.gauss_newton import HUBER, SIGMA_FLOOR
 from rtid.identify.record import Record
 from rtid.identify.simulated import Plant, run_record
@@ -31,6 +31,8 @@ Mask = NDArray[np.bool_]
 
 _LOG_STEP = 0.3
 _SWELL = 1.5  # of the usual deviation: a residual that swells more shows a change of the plant and not the noise
+_WILD = 5.0  # deviations of the noise
+_SHORTEST = 64  # rows
 _RENEW_EVERY = 8  # blocks between two noise models
 
 
@@ -38,8 +40,8 @@ class FollowingEstimator(Kept):
     """`structure.Estimator` for an output-error model. `memory`: rows after which a datum counts 1/e."""
 
     KEPT = (
-        "_fit", "_covariance", "_spread", "_prior", "_weight", "_last_psi", "_blocks", "invalid", "_predictor",
-        "_whitener", "_noise", "_leftover", "_forgetting",
+        "_fit", "_covariance", "_spread", "_prior", "_weight", "_blocks", "invalid", "_predictor",
+        "_whitener", "_noise", "_leftover", "_forgetting", "_recent",
     )  # fmt: skip
 
     def __init__(self, plant: Plant, fit: Fit, record: Record, *, memory: float) -> None:
@@ -47,18 +49,16 @@ class FollowingEstimator(Kept):
         self._fit = fit
         self._memory = memory
         residual, psi, ok, self._predictor = run_record(plant, record, fit)
-        finite = record.output[np.isfinite(record.output)]
-        self._spread = float(np.std(finite))
+        self._prior = plant.prior(record.inputs, record.output[np.isfinite(record.output)])
+        self._spread = float(self._prior[-1])
         self._free = np.flatnonzero(plant.free)
-        self._prior = plant.prior.copy()
-        self._prior[-1] = max(self._spread, 1e-9)
         self._covariance = fit.covariance[np.ix_(self._free, self._free)]
         self._forgetting = self._start_information()
+        self._recent = min(1.0, self._short / self._memory) * self._forgetting.window
         ok[: min(plant.settling_rows(fit.theta), len(ok) // 2)] = False  # what came before the record dies down there
         e, _, good = self._start_whitening(residual, psi, ok)
         self._noise = RunningAutocovariance(autocovariance(residual, ok))
         self._leftover = RunningAutocovariance(autocovariance(e, good, LONG_RUN_LAGS))
-        self._last_psi = np.vstack((np.zeros((1, len(fit.theta))), psi))[-2:]
         self._weight = float(min(memory, max(1, ok.sum())))
         self._blocks = 0
         self.invalid = False
@@ -70,8 +70,8 @@ class FollowingEstimator(Kept):
     def step(self, inputs: Array, output: Array, ok: Mask) -> tuple[Array, Array, Mask]:
         """Learn from the next m rows: residuals e (one step) and ε (simulated) before learning, rows that count."""
         residual, psi, ok = self._predictor.run(inputs, output, ok)
-        e, phi, good = self._whitener.run(residual, psi, ok)
-        self._last_psi = np.vstack((self._last_psi, psi))[-2:]
+        bound = _WILD * (self._fit.noise + self._floor)
+        e, phi, good = self._whitener.run(np.clip(residual, -bound, bound), psi, ok)  # no echo of one wild row
         self._learn(e[good], phi[good][:, self._free])
         if good.any():
             self._learn_noise(np.where(ok, residual, 0.0), np.where(good, e, 0.0), float(good.sum()))
@@ -84,9 +84,15 @@ class FollowingEstimator(Kept):
         self._leftover.break_off()
 
     def informed(self) -> Mask:
+        """Per parameter: at the pace of the last settling time, one memory would tell it to 1/7 of its prior."""
         known = np.zeros(len(self._fit.theta), dtype=np.bool_)
-        known[self._free] = self._forgetting.informed()
+        known[self._free] = informed(self._memory / self._short * self._recent, self._prior[self._free])
         return known
+
+    @property
+    def _short(self) -> float:
+        """Rows of the window that tells whether data inform now."""
+        return min(self._memory, float(max(self._plant.settling_rows(self._fit.theta), _SHORTEST)))
 
     def _start_whitening(self, residual: Array, psi: Array, ok: Mask) -> tuple[Array, Array, Mask]:
         self._whitener = Whitener(psi.shape[1])
@@ -96,7 +102,7 @@ class FollowingEstimator(Kept):
     def _start_information(self) -> SubspaceForgetting:
         information = np.asarray(np.linalg.inv(self._covariance + 1e-18 * np.eye(len(self._free))), dtype=np.float64)
         share = min(1.0, self._memory / max(1, self._fit.rows))
-        return SubspaceForgetting(share * information, share * information, self._prior[self._free])
+        return SubspaceForgetting(information, share * information, self._prior[self._free])
 
     def _learn(self, e: Array, phi: Array) -> None:
         if len(e) == 0:
@@ -120,6 +126,7 @@ class FollowingEstimator(Kept):
         self._forgetting.forget(float(np.exp(-len(unit) / self._memory)))
         self._walk(len(unit))
         gained = self._forgetting.add(scaled)
+        self._recent = np.exp(-len(unit) / self._short) * self._recent + gained
         gain = np.linalg.inv(self._forgetting.information)
         keep = np.eye(len(gain)) - gain @ gained
         understated = long_run_ratio(self._leftover.covariance)
@@ -135,20 +142,14 @@ class FollowingEstimator(Kept):
         self._covariance[-1, -1] += variance
 
     def _limited(self, step: Array) -> Array:
-        limit = np.full(len(self._plant.names), _LOG_STEP)
-        limit[-2], limit[-1] = self._plant.period, np.inf
-        bound = limit[self._free]
+        bound = self._plant.step_limit(_LOG_STEP, 1.0)[self._free]
         return np.asarray(np.minimum(np.maximum(step, -bound), bound))
 
     def _move(self, step: Array) -> None:
         theta = self._fit.theta.copy()
         theta[self._free] += step
         theta = self._plant.within(theta)
-        moved = theta - self._fit.theta
-        moved[-1] = 0.0
-        shifts = self._last_psi @ moved
-        model = self._plant.model(theta, self._fit.sign)
-        self._predictor.shift(theta, model, (float(shifts[1]), float(shifts[0])))
+        self._predictor.move(theta, theta - self._fit.theta, self._fit.sign)
         p = len(theta)
         covariance = np.zeros((p, p))
         covariance[np.ix_(self._free, self._free)] = self._covariance

@@ -50,8 +50,8 @@ class SubspaceForgetting(Kept):
         row = self.information[:, column]
         self.information = self.information - np.outer(row, row) * (variance / (1.0 + variance * row[column]))
 
-    def informed(self) -> NDArray[np.bool_]:
-        """Per parameter: the window alone knows it to 1/7 of its prior deviation, whatever the others are."""
-        scale = np.outer(self._prior, self._prior)
-        inverse = np.linalg.inv(self.window * scale + 1e-9 * np.eye(len(self._prior)))
-        return np.asarray(np.diag(inverse) * KNOWN < 1.0)
+
+def informed(information: Array, prior: Array) -> NDArray[np.bool_]:
+    """Per parameter: (p, p) information alone knows it to 1/7 of its prior deviation, whatever the others are."""
+    inverse = np.linalg.inv(information * np.outer(prior, prior) + 1e-9 * np.eye(len(prior)))
+    return np.asarray(np.diag(inverse) * KNOWN < 1.0)

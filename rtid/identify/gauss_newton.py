@@ -23,6 +23,7 @@ Mask = NDArray[np.bool_]
 HUBER = 3.0
 SIGMA_FLOOR = 1e-5  # of the output's deviation: noise-free data must not make infinite weights
 SINGULAR = 1e-12  # of unit-scaled sensitivities: what the record does not inform gets a huge variance, not an error
+_SILENT = 1e-60  # power of a sensitivity that is nothing
 _STEP_LIMIT = 1.0  # on logarithms
 
 
@@ -57,7 +58,7 @@ class RecordFit:
     def point(self, fit: Fit, states: Array) -> Point:
         """Evaluate at `fit` with the nuisance parameters: the model's initial states, then the trend."""
         residual, psi, ok, predictor = run_record(self.plant, self.record, fit)
-        free = np.hstack((self._free_response(predictor.simulator.model.f), self._trend))
+        free = np.hstack((self._free_response(predictor.simulators[0].model.f), self._trend))
         residual = residual - free @ states
         whitener = Whitener(psi.shape[1] + free.shape[1])
         whitener.coefficients = fit.ar
@@ -81,7 +82,7 @@ class RecordFit:
         """Of θ, nuisance parameters eliminated, what is left of the noise's colour counted; 0 for what is known."""
         columns = self._columns()
         phi = point.phi[point.ok][:, columns]
-        scale = np.sqrt(np.maximum((phi**2).sum(axis=0), 1e-300))
+        scale = np.sqrt(np.maximum((phi**2).sum(axis=0), _SILENT))
         normal = (phi / scale).T @ (phi / scale)
         normal[np.diag_indices_from(normal)] += SINGULAR
         inverse = np.linalg.inv(normal)
@@ -142,9 +143,8 @@ class RecordFit:
     def _try(self, now: Point, damping: float) -> Point:
         step = self._step(now, damping)
         p = len(now.fit.theta)
-        limited = step[:p].copy()
-        limited[:-2] = np.clip(limited[:-2], -_STEP_LIMIT, _STEP_LIMIT)
-        limited[-2] = np.clip(limited[-2], -2.0 * self.plant.period, 2.0 * self.plant.period)
+        limit = self.plant.step_limit(_STEP_LIMIT, 2.0)
+        limited = np.minimum(np.maximum(step[:p], -limit), limit)
         theta = self.plant.within(now.fit.theta + limited)
         return self.point(replace(now.fit, theta=theta), now.states + step[p:])
 
@@ -153,7 +153,7 @@ class RecordFit:
         e, phi = now.e[now.ok], now.phi[now.ok][:, columns]
         bound = HUBER * now.fit.sigma
         weight = bound / np.maximum(np.abs(e), bound)
-        scale = np.sqrt(np.maximum((phi**2).sum(axis=0), 1e-300))
+        scale = np.sqrt(np.maximum((phi**2).sum(axis=0), _SILENT))
         scaled = phi / scale
         normal = (scaled * weight[:, None]).T @ scaled
         normal[np.diag_indices_from(normal)] *= 1.0 + damping

@@ -17,6 +17,7 @@ from rtid.identify.record import Record
 from rtid.identify.simulated import Plant, SimulatedPredictor, run_record
 from rtid.identify.start import candidates, liveliest_part
 from rtid.identify.structure import Fit
+from rtid.identify.whitening import LONG_RUN_LAGS, Whitener, autocovariance, long_run_ratio
 
 Array = NDArray[np.float64]
 Mask = NDArray[np.bool_]
@@ -28,10 +29,10 @@ _NEIGHBOURS = (-1.0, -0.5, 0.5, 1.0)  # rows: the loss has a local minimum in ev
 
 
 class OutputError:
-    """`structure.Structure` for simulated models of order 1 or 2."""
+    """`structure.Structure` for simulated models of order 1 or 2 with one or several inputs."""
 
-    def __init__(self, order: int, period: float, dead_time: tuple[float, float]) -> None:
-        self._plant = Plant(order, period, dead_time)
+    def __init__(self, order: int, period: float, dead_time: tuple[float, float], *, inputs: int = 1) -> None:
+        self._plant = Plant(order, period, dead_time, inputs=inputs)
         self.names = self._plant.names
         self.period = period
 
@@ -42,7 +43,7 @@ class OutputError:
         if point is None:
             return None
         fit = point.fit
-        errors = np.sqrt(np.diag(fit.covariance))[:-2]
+        errors = np.sqrt(np.diag(fit.covariance))[: 1 + self._plant.order]
         long_enough = fit.rows * self.period >= MIN_TIME_CONSTANTS * self.slowest(fit)
         return fit if bool((errors < START_ERROR).all()) and long_enough else None
 
@@ -61,6 +62,21 @@ class OutputError:
     def estimator(self, fit: Fit, record: Record, *, memory: float) -> FollowingEstimator:
         return FollowingEstimator(self._plant, fit, record, memory=memory)
 
+    def relative_gain(self, record: Record, fit: Fit) -> tuple[float, float] | None:
+        """Least squares of the whitened residual on the whitened output of the model and a level."""
+        residual, psi, ok, _ = run_record(self._plant, record, fit)
+        whitener = Whitener(psi.shape[1])
+        whitener.coefficients = fit.ar
+        e, phi, good = whitener.run(residual, psi, ok)
+        columns = phi[good][:, [0, -1]]
+        if len(columns) < MIN_ROWS // 2 or np.linalg.cond(columns.T @ columns) > 1e12:
+            return None
+        solution = np.linalg.lstsq(columns, e[good], rcond=None)[0]
+        left = e[good] - columns @ solution
+        colour = long_run_ratio(autocovariance(left, np.ones(len(left), dtype=np.bool_), LONG_RUN_LAGS))
+        variance = np.linalg.inv(columns.T @ columns)[0, 0] * float(left @ left) / len(left) * colour
+        return 1.0 + float(solution[0]), float(np.sqrt(variance))
+
     def quantities(self, theta: Array, fit: Fit) -> dict[str, float]:
         return self._plant.quantities(theta, fit)
 
@@ -70,10 +86,12 @@ class OutputError:
     def settling_rows(self, fit: Fit) -> int:
         return self._plant.settling_rows(fit.theta)
 
-    def transfer(self, fit: Fit) -> tuple[Array, Array, int]:
-        model = self._plant.model(fit.theta, fit.sign)
+    def transfer(self, fit: Fit) -> list[tuple[Array, Array, int]]:
         order = self._plant.order
-        return np.concatenate(([0.0], model.b[: order + 1])), np.concatenate(([1.0], model.f[:order])), model.d
+        return [
+            (np.concatenate(([0.0], model.b[: order + 1])), np.concatenate(([1.0], model.f[:order])), model.d)
+            for model in self._plant.models(fit.theta, fit.sign)
+        ]
 
     def _from_grid(self, record: Record) -> Point | None:
         starts = candidates(self._plant, record)
@@ -87,14 +105,15 @@ class OutputError:
         if not self._plant.free[-2]:
             return point
         for _ in range(8):
-            shifted = [self._shifted(point.fit, rows) for rows in _NEIGHBOURS]
+            places = self._plant.dead_times
+            shifted = [self._shifted(point.fit, place, rows) for place in places for rows in _NEIGHBOURS]
             winner = best([point, *(whole.polish(fit, rounds=2) for fit in shifted)])
             if winner is point:
                 return point
             point = winner
         return point
 
-    def _shifted(self, fit: Fit, rows: float) -> Fit:
+    def _shifted(self, fit: Fit, place: int, rows: float) -> Fit:
         theta = fit.theta.copy()
-        theta[-2] += rows * self.period
+        theta[place] += rows * self.period
         return replace(fit, theta=self._plant.within(theta))

@@ -33,60 +33,97 @@ def candidates(plant: Plant, record: Record, most: int = 2) -> list[Fit]:
     part = liveliest_part(record)
     found: list[Fit] = []
     for pole in _PREWHITENING:
-        ranked = sorted(_scan(plant, part, pole), key=lambda c: c.loss)
+        ranked = sorted(_Scan(plant, part, pole).candidates(), key=lambda c: c.loss)
         found += [c.fit for c in ranked[:most]]
     return found
 
 
 def liveliest_part(record: Record) -> Record:
-    """The stretch of at most GRID_ROWS rows without a gap in which the input moves most."""
+    """The stretch of at most GRID_ROWS rows without a gap in which the inputs move most."""
     ends = (*record.starts[1:], len(record))
     windows = [
         (first, min(first + GRID_ROWS, end))
         for start, end in zip(record.starts, ends, strict=True)
         for first in range(start, end, GRID_ROWS)
     ]
-    best = max(windows, key=lambda w: float(np.var(record.inputs[w[0] : w[1], 0])) * (w[1] - w[0]))
-    return record.part(*best)
+    usual = np.maximum(record.inputs.var(axis=0), 1e-300)
+
+    def motion(window: tuple[int, int]) -> float:
+        part = record.inputs[window[0] : window[1]]
+        return float((part.var(axis=0) / usual).sum()) * len(part)
+
+    return record.part(*max(windows, key=motion))
 
 
-def _scan(plant: Plant, record: Record, pole: float) -> Iterator[Candidate]:
-    """Every shape of the grid with its best dead time; `pole` whitens by 1 - pole·q^-1 first."""
-    centre = float(np.mean(record.inputs[:, 0]))
-    drive = record.inputs[:, 0] - centre
-    ok = record.ok & np.isfinite(record.output)
-    ok[: plant.depth + 3] = False
-    if ok.sum() < 20:
-        return
-    output = np.where(np.isfinite(record.output), record.output, 0.0)
-    delays = _delays(plant)
-    for shape in _shapes(plant, len(record)):
+class _Scan:
+    """One record, whitened by 1 - pole·q^-1, against every shape of the grid."""
+
+    def __init__(self, plant: Plant, record: Record, pole: float) -> None:
+        self._plant = plant
+        self._pole = pole
+        self._centre = record.inputs.mean(axis=0)
+        self._drives = (record.inputs - self._centre).T
+        self._rows = len(record)
+        ok = record.ok & np.isfinite(record.output)
+        ok[: plant.depth + 3] = False
+        self._good = ok & np.concatenate(([False], ok[:-1]))
+        self._output = self._whiten(np.where(np.isfinite(record.output), record.output, 0.0))
+        least, most = (round(v / plant.period) for v in plant.dead_time)
+        self._delays = list(range(int(least), max(int(most), int(least)) + 1))
+
+    def candidates(self) -> list[Candidate]:
+        if self._good.sum() < 20:
+            return []
+        found = [self._candidate(shape) for shape in _shapes(self._plant, self._rows)]
+        return [candidate for candidate in found if candidate is not None]
+
+    def _candidate(self, shape: tuple[float, ...]) -> Candidate | None:
+        """The best dead times for one shape, with the gains and the offset that least squares gives them."""
+        plant = self._plant
         unit = held_map(plant.order, np.array([0.0, *shape, 0.0]), sign=1.0, period=plant.period)
-        impulse = np.concatenate(([1.0], np.zeros(len(drive) - 1)))
-        free = all_pole(impulse, unit.f, (0.0, 0.0))[0]
-        x = _unit_response(drive, unit.f, unit.b, max(delays))
-        shifted = np.array([x[max(delays) - d : max(delays) - d + len(drive)] for d in delays])
-        good = ok & np.concatenate(([False], ok[:-1]))
-        losses, gains, offsets = _solve(*(_whiten(part, pole)[..., good] for part in (shifted, output, free)))
-        best = int(np.argmin(losses))
-        if gains[best] == 0.0 or not np.isfinite(losses[best]):
-            continue
-        offset = offsets[best] / (1.0 - pole)
-        theta = np.array([math.log(abs(gains[best])), *shape, delays[best] * plant.period, offset])
-        yield Candidate(float(losses[best]), _start_fit(plant, theta, gains[best], centre))
+        impulse = np.concatenate(([1.0], np.zeros(self._rows - 1)))
+        always = [np.full(len(self._output), 1.0 - self._pole), self._whiten(all_pole(impulse, unit.f, (0.0, 0.0))[0])]
+        responses = [self._responses(drive, unit.f, unit.b) for drive in self._drives]
+        chosen = self._choose(responses, always)
+        columns = np.column_stack([r[c] for r, c in zip(responses, chosen, strict=True)] + always)
+        solution = np.linalg.lstsq(columns, self._output, rcond=1e-9)[0]
+        gains, offset = solution[: plant.inputs], float(solution[plant.inputs])
+        loss = float(((self._output - columns @ solution) ** 2).sum())
+        if gains[0] == 0.0 or not math.isfinite(loss):
+            return None
+        delays = [self._delays[c] * plant.period for c in chosen]
+        later = [v for pair in zip(gains[1:].tolist(), delays[1:], strict=True) for v in pair]
+        theta = np.array([math.log(abs(gains[0])), *shape, *later, delays[0], offset])
+        return Candidate(loss, self._fit(theta, float(gains[0])))
 
+    def _choose(self, responses: list[Array], always: list[Array]) -> list[int]:
+        """Which dead time of each input: one after the other, the others held, twice where there are several."""
+        chosen = [0] * len(responses)
+        for _ in range(1 if len(responses) == 1 else 2):
+            for i, shifted in enumerate(responses):
+                others = [r[chosen[j]] for j, r in enumerate(responses) if j != i]
+                chosen[i] = int(np.argmax(_explained(shifted, self._output, [*always, *others])))
+        return chosen
 
-def _start_fit(plant: Plant, theta: Array, gain: float, centre: float) -> Fit:
-    p = len(theta)
-    return Fit(
-        theta=plant.within(theta), covariance=np.zeros((p, p)), sigma=1.0, noise=1.0, ar=np.zeros(0), rows=0,
-        centre=np.array([centre]), sign=math.copysign(1.0, gain),
-    )  # fmt: skip
+    def _responses(self, drive: Array, f: Array, b: Array) -> Array:
+        """Model output for gain 1 at every dead time, from the steady state of the first input; (delays, good rows)."""
+        before = self._delays[-1]
+        padded = np.concatenate((np.full(before + 3, drive[0]), drive))
+        forcing = b[0] * padded[2:-1] + b[1] * padded[1:-2] + b[2] * padded[:-3]
+        x = all_pole(forcing, f, (drive[0], drive[0]))[0]
+        return self._whiten(np.array([x[before - d : before - d + self._rows] for d in self._delays]))
 
+    def _whiten(self, values: Array) -> Array:
+        if self._pole:
+            values = np.concatenate((values[..., :1], values[..., 1:] - self._pole * values[..., :-1]), axis=-1)
+        return values[..., self._good]
 
-def _delays(plant: Plant) -> list[int]:
-    least, most = (round(v / plant.period) for v in plant.dead_time)
-    return list(range(int(least), max(int(most), int(least)) + 1))
+    def _fit(self, theta: Array, gain: float) -> Fit:
+        p = len(theta)
+        return Fit(
+            theta=self._plant.within(theta), covariance=np.zeros((p, p)), sigma=1.0, noise=1.0, ar=np.zeros(0), rows=0,
+            centre=self._centre, sign=math.copysign(1.0, gain),
+        )  # fmt: skip
 
 
 def _shapes(plant: Plant, rows: int) -> Iterator[tuple[float, ...]]:
@@ -100,28 +137,11 @@ def _shapes(plant: Plant, rows: int) -> Iterator[tuple[float, ...]]:
             yield from ((math.log(1.0 / tau), math.log(z)) for z in _DAMPINGS)
 
 
-def _unit_response(drive: Array, f: Array, b: Array, before: int) -> Array:
-    """Model output for gain 1 and dead time 0, preceded by `before` rows of the steady state it starts from."""
-    padded = np.concatenate((np.full(before + 3, drive[0]), drive))
-    forcing = b[0] * padded[2:-1] + b[1] * padded[1:-2] + b[2] * padded[:-3]
-    return all_pole(forcing, f, (drive[0], drive[0]))[0]
-
-
-def _whiten(values: Array, pole: float) -> Array:
-    if pole == 0.0:
-        return values
-    return np.concatenate((values[..., :1], values[..., 1:] - pole * values[..., :-1]), axis=-1)
-
-
-def _solve(x: Array, y: Array, free: Array) -> tuple[Array, Array, Array]:
-    """Least squares of y (m,) on each row of x (c, m), a constant and the free response: loss, gain, offset, (c,)."""
-    basis, _ = np.linalg.qr(np.column_stack((np.ones(len(y)), free)))
-    y_left = y - basis @ (basis.T @ y)
-    x_parts = x @ basis
-    power = (x**2).sum(axis=1) - (x_parts**2).sum(axis=1)
-    cross = x @ y_left
-    usable = power > 1e-9 * np.maximum((x**2).sum(axis=1), 1e-300)
-    gains = np.where(usable, cross / np.where(usable, power, 1.0), 0.0)
-    losses = float(y_left @ y_left) - gains * cross
-    offsets = y.mean() - gains * x.mean(axis=1)
-    return losses, gains, offsets
+def _explained(x: Array, y: Array, basis: list[Array]) -> Array:
+    """How much of y (m,) each row of x (c, m) explains beyond the basis, (c,)."""
+    q, _ = np.linalg.qr(np.column_stack(basis))
+    left = y - q @ (q.T @ y)
+    total = (x**2).sum(axis=1)
+    power = total - ((x @ q) ** 2).sum(axis=1)
+    usable = power > 1e-9 * np.maximum(total, 1e-300)
+    return np.where(usable, (x @ left) ** 2 / np.where(usable, power, 1.0), 0.0)

@@ -95,6 +95,10 @@ class Structure(Protocol):
 
     def estimator(self, fit: Fit, record: Record, *, memory: float) -> Estimator: ...
 
+    def relative_gain(self, record: Record, fit: Fit) -> tuple[float, float] | None:
+        """Gain over that of `fit` and its standard error, dynamics as in `fit`; None where that is not told."""
+        ...
+
     def quantities(self, theta: Array, fit: Fit) -> dict[str, float]:
         """Engineering quantities at θ in seconds and engineering units; NaN for one that does not exist there."""
         ...
@@ -107,8 +111,8 @@ class Structure(Protocol):
         """Rows of the dead time and five largest time constants."""
         ...
 
-    def transfer(self, fit: Fit) -> tuple[Array, Array, int]:
-        """Numerator and denominator in ascending powers of q^-1, and the whole rows of delay before them."""
+    def transfer(self, fit: Fit) -> list[tuple[Array, Array, int]]:
+        """Per input: numerator and denominator in ascending powers of q^-1, and the whole rows of delay before them."""
         ...
 
 

@@ -55,7 +55,6 @@ class AlarmBook(Kept):
             if not finding.present:
                 return
             entry = self._entries[(alarm, signal)] = AlarmEntry()
-        setting = self._settings[alarm]
         key = (alarm, signal)
         if entry.active is None:
             self._maybe_raise(key, entry, finding, time_s, stamp)
@@ -66,7 +65,7 @@ class AlarmBook(Kept):
                 self._emit(key, entry, "updated", finding, time_s, stamp)
         else:
             entry.clear = True
-            self._maybe_clear(key, entry, setting, time_s, stamp)
+            self._maybe_clear(key, entry, finding.text, time_s, stamp)
 
     def acknowledge(
         self, alarm: str, *, time_s: float, stamp: float, by: str, signal: str | None = None, why: str = ""
@@ -76,7 +75,7 @@ class AlarmBook(Kept):
         if entry is None or entry.acknowledged or not entry.raised:
             return False
         entry.acknowledged = True
-        retain = entry.active is not None and not entry.clear
+        retain = entry.active is not None
         finding = _told(entry.last, f"acknowledged by {by}", why)
         self._transitions.append(
             self._transition((alarm, signal), "acknowledged", finding, time_s, stamp, by=by, retain=retain)
@@ -202,16 +201,18 @@ class AlarmBook(Kept):
             entry.active = ActiveAlarm(key[0], setting.priority, stamp, finding.text, key[1], finding.quantity)
             self._emit(key, entry, "active", finding, time_s, stamp)
 
-    def _maybe_clear(self, key: tuple[str, str | None], entry: AlarmEntry, setting: AlarmSetting, *when: float) -> None:
+    def _maybe_clear(self, key: tuple[str, str | None], entry: AlarmEntry, why: str, *when: float) -> None:
         time_s, stamp = when
+        setting = self._settings[key[0]]
         entry.pending_since = time_s if entry.pending_since is None else entry.pending_since
         held = setting.latching and not entry.acknowledged
         if time_s - entry.pending_since >= setting.off_delay_s and not held:
-            self._finish(key, entry, time_s, stamp)
+            self._finish(key, entry, time_s, stamp, why=why)
 
-    def _finish(self, key: tuple[str, str | None], entry: AlarmEntry, time_s: float, stamp: float) -> None:
-        text = f"back to normal: {key[0].replace('_', ' ')}"
-        finding = replace(entry.last, present=False, text=text)
+    def _finish(
+        self, key: tuple[str, str | None], entry: AlarmEntry, time_s: float, stamp: float, *, why: str = ""
+    ) -> None:
+        finding = replace(entry.last, present=False, text=why or f"back to normal: {key[0].replace('_', ' ')}")
         entry.active, entry.pending_since, entry.last = None, None, finding
         if entry.shelved_until is not None:
             return

@@ -7,7 +7,7 @@ from dataclasses import dataclass, replace
 import numpy as np
 from numpy.typing import NDArray
 
-from rtid.identify.delta import quantity_jacobian
+from rtid.identify.delta import is_linear, quantity_jacobian
 from rtid.identify.record import Record, blank_record
 from rtid.identify.structure import Fit, Predictor, Structure
 from rtid.identify.whitening import Whitener
@@ -20,6 +20,7 @@ PROMISED_ROWS = 3000  # below, the false-alarm budget is not promised
 INFORMED = 0.15  # standard error of ln|quantity|
 MIN_TIME_CONSTANTS = 20.0
 _CLIP = 4.0
+_UNTOLD = 1e6  # variance of a parameter of which the baseline's data said nothing
 _AGREEMENT = 4.0  # standard errors between the halves of a stationary record
 
 
@@ -117,8 +118,9 @@ def _unsteady(structure: Structure, record: Record, fit: Fit, tolerances: dict[s
         if name == "offset" or not np.isfinite([value, ends[0][name], ends[1][name]]).all():
             continue
         before, after = ends[0][name], ends[1][name]
-        allowed = 0.5 * max(tolerances.get(name, 0.0) * abs(value), structure.period if name == "dead_time" else 0.0)
-        error = float(np.sqrt(spread[i, i])) * (1.0 if name == "dead_time" else abs(value))
+        least = structure.period if name.startswith("dead_time") else 0.0
+        allowed = 0.5 * max(tolerances.get(name, 0.0) * abs(value), least)
+        error = float(np.sqrt(spread[i, i])) * (1.0 if is_linear(name) else abs(value))
         if abs(after - before) > max(allowed, _AGREEMENT * error):
             text = f"learning: {name} moved from {before:.4g} to {after:.4g} while learning; the older half was dropped"
             return Refusal(text, stale_half=True)
@@ -141,6 +143,8 @@ def _describe(structure: Structure, fit: Fit, e: Array, phi: Array, *, stamp: fl
         return None
     covariance = np.zeros_like(gamma0)
     covariance[np.ix_(free, free)] = np.linalg.inv(block) / kept
+    silent = ~free & (np.diag(fit.covariance) > 0.0)
+    covariance[silent, silent] = np.minimum(np.diag(fit.covariance)[silent], _UNTOLD)
     known = np.diag(fit.covariance) == 0.0
     covariance[known, :] = covariance[:, known] = 0.0
     accepted = replace(fit, covariance=covariance)

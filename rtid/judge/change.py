@@ -7,7 +7,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from rtid.identify.delta import quantity_jacobian
+from rtid.identify.delta import is_linear, quantity_jacobian
 from rtid.identify.structure import Fit, Structure
 from rtid.judge.baseline import Baseline
 
@@ -74,8 +74,15 @@ class Judged:
 
     def half_used(self, delta: Array) -> bool:
         """Whether parameters that moved by `delta`, (p,), move any quantity by more than half its tolerance."""
-        moved = np.abs(self._gradient @ delta).tolist()
-        return any(m > 0.5 * self._allowed(name) for name, m in zip(self.names, moved, strict=True))
+        moved = zip(self.names, np.abs(self._gradient @ delta).tolist(), strict=True)
+        return any(m > 0.5 * self._allowed(name) * self._size(name) for name, m in moved)
+
+    def gain_change(self, ratio: float, error: float) -> QuantityChange:
+        """A gain that is `ratio` times the baseline's, with its standard error; the baseline's own is counted."""
+        spread = float(np.hypot(error, ratio * np.sqrt(self._baseline_variance["gain"])))
+        ends = [100.0 * (ratio - 1.0 + k * spread) for k in (0.0, -SURE, SURE)]
+        tolerance = 100.0 * self._allowed("gain")
+        return QuantityChange("gain", ends[0], ends[1], ends[2], tolerance, abs(ratio - 1.0) / spread)
 
     @property
     def gain_gradient(self) -> Array:
@@ -84,18 +91,27 @@ class Judged:
 
     def _allowed(self, name: str) -> float:
         """Tolerance as a difference of logarithms; of the dead time in seconds, one row at the least."""
-        if name == "dead_time":
+        if name.startswith("dead_time"):
             return max(self._tolerances[name] * self._baseline.values[name], self._structure.period)
         return self._tolerances[name]
 
+    def _size(self, name: str) -> float:
+        """What one unit of `_allowed` is in the units of the Jacobian's row."""
+        gain_of_its_own = is_linear(name) and not name.startswith("dead_time")
+        return abs(self._baseline.values[name]) if gain_of_its_own else 1.0
+
     def _one(self, name: str, value: float, variance: float, fit: Fit) -> QuantityChange:
         before = self._baseline.values[name]
-        if name == "dead_time":
+        if name.startswith("dead_time"):
             variance += (fit.delay_error**2 + self._baseline.fit.delay_error**2) * self._structure.period**2
-            return self._dead_time(value - before, before, variance + self._baseline_variance[name])
+            return self._dead_time(name, value - before, variance + self._baseline_variance[name])
         if value == 0.0 or (value > 0.0) != (before > 0.0):
             return self._reversed(name, value, before)
-        error = max(float(np.sqrt(variance + self._baseline_variance[name])), 1e-12)
+        if is_linear(name):
+            spread = variance / value**2 + self._baseline_variance[name] / before**2
+        else:
+            spread = variance + self._baseline_variance[name]
+        error = max(float(np.sqrt(spread)), 1e-12)
         delta = float(np.log(value / before))
         ends = [100.0 * float(np.expm1(min(delta + k * error, 20.0))) for k in (0.0, -SURE, SURE)]
         return QuantityChange(name, ends[0], ends[1], ends[2], 100.0 * self._allowed(name), abs(delta) / error)
@@ -105,12 +121,12 @@ class Judged:
         change = 100.0 * (value / before - 1.0)
         return QuantityChange(name, change, 2.0 * change, -100.0, 100.0 * self._allowed(name), _REVERSED)
 
-    def _dead_time(self, delta: float, before: float, variance: float) -> QuantityChange:
+    def _dead_time(self, name: str, delta: float, variance: float) -> QuantityChange:
         error = float(np.sqrt(variance))
-        scale = 100.0 / max(before, self._structure.period)
+        scale = 100.0 / max(self._baseline.values[name], self._structure.period)
         ends = [scale * (delta + k * error) for k in (0.0, -SURE, SURE)]
-        tolerance = scale * self._allowed("dead_time")
-        return QuantityChange("dead_time", ends[0], ends[1], ends[2], tolerance, abs(delta) / max(error, 1e-12))
+        tolerance = scale * self._allowed(name)
+        return QuantityChange(name, ends[0], ends[1], ends[2], tolerance, abs(delta) / max(error, 1e-12))
 
 
 def surest(changes: list[QuantityChange]) -> QuantityChange:
@@ -131,6 +147,7 @@ def _told(baseline: Baseline, i: int, name: str, tolerances: dict[str, float]) -
     row = baseline.jacobian[i]
     if name not in tolerances or not np.isfinite(row).all():
         return False
-    if name == "dead_time":
-        return bool(np.any(row @ baseline.covariance != 0.0)) or baseline.fit.delay_error > 0.0
-    return float(np.sqrt(row @ baseline.covariance @ row)) < _COMPARABLE
+    error = float(np.sqrt(row @ baseline.covariance @ row))
+    if name.startswith("dead_time"):
+        return error > 0.0 or baseline.fit.delay_error > 0.0
+    return error < _COMPARABLE * (abs(baseline.values[name]) if is_linear(name) else 1.0)

@@ -83,8 +83,11 @@ class DriftScore(Kept):
         if not frozen:
             self._null_covariance[-1, -1] += self._walk * len(e)
         local = max(1.0, self._local_noise)
-        spread = local * np.eye(len(e)) + phi @ self._null_covariance @ phi.T
-        root = np.asarray(np.linalg.cholesky(spread), dtype=np.float64)
+        try:
+            root = _root(local, phi, self._null_covariance)
+        except np.linalg.LinAlgError:
+            self._null_covariance = _positive(self._null_covariance)
+            root = _root(local, phi, self._null_covariance, slack=1e-9)
         innovation = np.asarray(np.linalg.solve(root, e - phi @ self._null), dtype=np.float64)
         scale = np.diag(root)
         self._weigh(np.clip(innovation * scale, -CLIP * scale, CLIP * scale), scale**2 - local, phi, e)
@@ -126,3 +129,16 @@ class DriftScore(Kept):
         spread = self._spread + _FADE * self._gamma0 / kept[:, None, None] + 1e-12 * np.eye(len(self._null))
         solved = np.linalg.solve(spread, self._score[:, :, None])[:, :, 0]
         return np.asarray((self._score * solved).sum(axis=1))
+
+
+def _root(local: float, phi: Array, covariance: Array, *, slack: float = 0.0) -> Array:
+    """Lower triangular root of the innovations' covariance, (m, m); `slack` of its size is added to the diagonal."""
+    spread = phi @ covariance @ phi.T
+    spread += (local + slack * float(np.max(np.abs(spread)))) * np.eye(len(phi))
+    return np.asarray(np.linalg.cholesky(spread), dtype=np.float64)
+
+
+def _positive(matrix: Array) -> Array:
+    """The nearest covariance: rounding must leave no direction below zero."""
+    values, vectors = np.linalg.eigh(matrix)
+    return np.asarray((vectors * np.maximum(values, 0.0)) @ vectors.T)

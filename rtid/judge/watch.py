@@ -92,7 +92,7 @@ class Watch(Kept):
         self._score.step(e, phi, frozen=frozen)
         self._rows += len(e)
         estimator = self._relearn(estimator, inputs, output, ok)
-        self._decide(self._judged.assess(estimator.fit) if self._relearning else [], book, when)
+        self._decide(self._changes(estimator), book, when)
         self._note_blindness(book, when)
         return estimator
 
@@ -148,10 +148,18 @@ class Watch(Kept):
         memory = self._settings.memory_s / self._settings.period_s
         return Relearning(self._structure, self.baseline.fit, memory=memory)
 
+    def _changes(self, estimator: Estimator) -> list[QuantityChange]:
+        """What has changed since the baseline, while a change is flagged; a lost gain where no model fits any more."""
+        if self._relearning is None:
+            return []
+        if self._relearning.gain_alone is not None:
+            return [self._judged.gain_change(*self._relearning.gain_alone)]
+        return self._judged.assess(estimator.fit)
+
     def _decide(self, changes: list[QuantityChange], book: AlarmBook, when: tuple[float, float]) -> None:
         time_s, stamp = when
         by_name = {q.name: q for q in changes}
-        beyond = [q for q in changes if q.beyond] if self._relearning and self._relearning.found else []
+        beyond = [q for q in changes if q.beyond] if self._relearning and self._relearning.told else []
         named = by_name.get(self._named) if self._named else None
         self._within_rows = self._within_rows + self._settings.block_rows if named is not None and named.within else 0
         if beyond and (named is None or not named.beyond):
@@ -165,14 +173,15 @@ class Watch(Kept):
             self._told = self._finding(told)
         book.note("plant_drift", self._told, time_s=time_s, stamp=stamp)
         shift = self._relearning is not None and self._named is None
-        book.note("plant_shift", self._shift_finding(changes) if shift else Finding(False), time_s=time_s, stamp=stamp)
+        gone = Finding(False, "plant_drift stands in its place" if self._named else "")
+        book.note("plant_shift", self._shift_finding(changes) if shift else gone, time_s=time_s, stamp=stamp)
 
     def _finding(self, change: QuantityChange) -> Finding:
         text = wording.drift_text(change, self.baseline.stamp)
         return Finding(True, text, change.name, change.change_pct, change.low_pct, change.high_pct)
 
     def _shift_finding(self, changes: list[QuantityChange]) -> Finding:
-        found = leader(changes) if self._relearning and self._relearning.found else None
+        found = leader(changes) if self._relearning and self._relearning.told else None
         if found is not None and self._hint == "undecided":
             self._hint = found.name
         change = next((q for q in changes if q.name == self._hint), None)

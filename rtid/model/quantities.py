@@ -3,10 +3,11 @@
 from __future__ import annotations
 
 import math
+from collections.abc import Sequence
 
 import numpy as np
 
-from rtid.identify.delta import quantity_jacobian
+from rtid.identify.delta import is_linear, quantity_jacobian
 from rtid.identify.structure import Fit, Structure
 from rtid.report import Quantity
 
@@ -14,28 +15,33 @@ NORMAL_95 = 1.959964
 UNKNOWN = 0.15  # standard error of ln|value| above which a quantity is unknown
 _REMEMBERED_ROWS = 60
 
-NAMES: dict[int, tuple[str, ...]] = {
-    1: ("gain", "time_constant_1", "dead_time", "offset", "noise"),
-    2: (
-        "gain", "natural_frequency", "damping_ratio", "time_constant_1", "time_constant_2", "dead_time", "offset",
-        "noise",
-    ),
-}  # fmt: skip
+_DYNAMICS: dict[int, tuple[str, ...]] = {
+    1: ("time_constant_1",),
+    2: ("natural_frequency", "damping_ratio", "time_constant_1", "time_constant_2"),
+}
 
 
-def units_of(input_unit: str, output_unit: str) -> dict[str, str]:
-    """Unit of every quantity; a unit that was not given is written 1."""
-    over = f"{output_unit or '1'}/{input_unit or '1'}"
+def names_of(order: int, inputs: int) -> tuple[str, ...]:
+    """Every quantity of a model, in the order in which it is published."""
+    later = [name for i in range(2, inputs + 1) for name in (f"gain_{i}", f"dead_time_{i}")]
+    return ("gain", *_DYNAMICS[order], "dead_time", *later, "offset", "noise")
+
+
+def units_of(inputs: Sequence[str], output: str) -> dict[str, str]:
+    """Unit of every quantity from those of the signals; a unit that was not given is written 1."""
+    over = [f"{output or '1'}/{unit or '1'}" if output or unit else "1" for unit in inputs]
+    later = {f"gain_{i}": unit for i, unit in enumerate(over[1:], start=2)}
+    delays = {f"dead_time_{i}": "s" for i in range(2, len(inputs) + 1)}
     return {
-        "gain": over if output_unit or input_unit else "1",
+        "gain": over[0], **later, **delays,
         "natural_frequency": "rad/s", "damping_ratio": "1", "time_constant_1": "s", "time_constant_2": "s",
-        "dead_time": "s", "offset": output_unit or "1", "noise": output_unit or "1",
+        "dead_time": "s", "offset": output or "1", "noise": output or "1",
     }  # fmt: skip
 
 
-def unknown(order: int, units: dict[str, str]) -> dict[str, Quantity]:
+def unknown(names: Sequence[str], units: dict[str, str]) -> dict[str, Quantity]:
     """Every quantity of a model that is not there yet."""
-    return {name: Quantity(None, None, None, None, units[name]) for name in NAMES[order]}
+    return {name: Quantity(None, None, None, None, units[name]) for name in names}
 
 
 def quantities(
@@ -45,13 +51,18 @@ def quantities(
     values, jacobian = quantity_jacobian(structure, fit)
     with np.errstate(invalid="ignore"):
         errors = dict(zip(values, np.sqrt(np.diag(jacobian @ fit.covariance @ jacobian.T)).tolist(), strict=True))
-    found = {name: _logarithmic(value, errors[name], units[name]) for name, value in values.items()}
-    delay_error = math.hypot(errors["dead_time"], fit.delay_error * structure.period)
-    limit = max(structure.period, UNKNOWN * (values["dead_time"] + structure.slowest(fit)))
-    found["dead_time"] = _linear(values["dead_time"] + output_shift, delay_error, units["dead_time"], limit=limit)
-    found["offset"] = _linear(values["offset"], errors["offset"], units["offset"])
-    found["noise"] = _noise(fit, units["noise"])
-    return found
+    found = {}
+    for name, value in values.items():
+        if name.startswith("dead_time"):
+            error = math.hypot(errors[name], fit.delay_error * structure.period)
+            limit = max(structure.period, UNKNOWN * (value + structure.slowest(fit)))
+            found[name] = _linear(value + output_shift, error, units[name], limit=limit)
+        elif is_linear(name):
+            limit = math.inf if name == "offset" else UNKNOWN * abs(value)
+            found[name] = _linear(value, errors[name], units[name], limit=limit)
+        else:
+            found[name] = _logarithmic(value, errors[name], units[name])
+    return found | {"noise": _noise(fit, units["noise"])}
 
 
 def _logarithmic(value: float, error: float, unit: str) -> Quantity:

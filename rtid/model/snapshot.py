@@ -21,14 +21,16 @@ def model_part(structure: Structure, fit: Fit | None, *, output_shift: float) ->
     """transfer, reduced and parameters; all None or empty while there is no model."""
     if fit is None:
         return {"transfer": None, "reduced": None, "parameters": {"names": [], "values": [], "covariance": []}}
-    numerator, denominator, delay = structure.transfer(fit)
+    transfers = structure.transfer(fit)
+    numerator, denominator, delay = transfers[0]
     rest = fit.delay * structure.period if fit.delay else delay * structure.period
     form = reduced(numerator, denominator, delay=rest + output_shift, period=structure.period)
+    parts = [
+        {"numerator": n.tolist(), "denominator": d.tolist(), "delay_samples": rows, "period_s": structure.period}
+        for n, d, rows in transfers
+    ]
     return {
-        "transfer": {
-            "numerator": numerator.tolist(), "denominator": denominator.tolist(), "delay_samples": delay,
-            "period_s": structure.period,
-        },
+        "transfer": parts[0] if len(parts) == 1 else parts,
         "reduced": asdict(form) if form else None,
         "parameters": {
             "names": list(structure.names), "values": fit.theta.tolist(), "covariance": fit.covariance.tolist(),

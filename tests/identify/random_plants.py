@@ -7,7 +7,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from rtid.identify.delta import LINEAR, quantity_jacobian
+from rtid.identify.delta import is_linear, quantity_jacobian
 from rtid.identify.record import Record
 from rtid.identify.structure import Fit, Structure
 from tests.identify.synthetic import coloured, held_response, lag, switching
@@ -63,6 +63,6 @@ def published_z(structure: Structure, fit: Fit, truth: dict[str, float]) -> dict
         error = math.sqrt(rows[name] @ fit.covariance @ rows[name])
         limit = {"offset": math.inf, "dead_time": max(1.0, 0.15 * (values["dead_time"] + structure.slowest(fit)))}
         if error <= limit.get(name, 0.15):
-            miss = values[name] - true if name in LINEAR else math.log(values[name] / true)
+            miss = values[name] - true if is_linear(name) else math.log(values[name] / true)
             z[name] = miss / error
     return z

@@ -235,7 +235,7 @@ def test_the_transfer_function_is_the_plant_s(order: int, shape: tuple[float, ..
     """Its impulse response against scipy.linalg.expm; the leading zero is the hold of one row."""
     structure = OutputError(order, 1.0, (0.0, 5.0))
     fit = guess([math.log(2.0), *np.log(shape), 2.3, 0.0])
-    numerator, denominator, delay = structure.transfer(fit)
+    numerator, denominator, delay = structure.transfer(fit)[0]
     assert (numerator[0], denominator[0], delay, len(denominator)) == (0.0, 1.0, 2, order + 1)
     impulse = np.eye(1, 40)[0]
     ours = np.zeros(40)

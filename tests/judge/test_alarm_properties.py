@@ -4,7 +4,6 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 
-import pytest
 from hypothesis import Phase, given
 from hypothesis import settings as hypothesis_settings
 from hypothesis import strategies as st
@@ -93,9 +92,6 @@ def test_only_what_was_raised_is_acknowledged_and_only_once(setting: AlarmSettin
                 open_to_acknowledge = True
 
 
-@pytest.mark.xfail(
-    strict=True, reason="acknowledge empties the retained message of an alarm that stands through its off-delay"
-)
 @seeded
 @given(settings, steps)
 def test_the_retained_message_is_emptied_exactly_when_cleared_and_acknowledged(

@@ -99,9 +99,6 @@ def test_acknowledging_during_the_off_delay_does_not_shorten_it() -> None:
     assert story.at(61.0, False) == ["cleared"]
 
 
-@pytest.mark.xfail(
-    strict=True, reason="acknowledge empties the retained message of an alarm that stands through its off-delay"
-)
 def test_an_alarm_that_stands_through_its_off_delay_keeps_its_retained_message() -> None:
     """The condition comes back without another transition: nothing would put the message there again."""
     story = Story(off_delay_s=60.0)

@@ -10,9 +10,9 @@ import pytest
 from rtid.judge import wording
 from rtid.judge.change import QuantityChange
 from rtid.judge.health import health_of
-from rtid.model.quantities import NAMES
+from rtid.model.quantities import names_of
 
-JUDGED = sorted({*NAMES[1], *NAMES[2]} - {"offset", "noise"})
+JUDGED = sorted({*names_of(1, 1), *names_of(2, 1)} - {"offset", "noise"})
 STAMP = 1_767_225_600.25
 
 

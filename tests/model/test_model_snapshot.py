@@ -10,7 +10,7 @@ import pytest
 from scipy.signal import lfilter  # type: ignore[import-untyped]
 
 from rtid.loop import Loop
-from rtid.model.quantities import NAMES
+from rtid.model.quantities import names_of
 from rtid.model.snapshot import change_part
 from rtid.plants.linear import LinearPlant, first_order, second_order, simulate
 from rtid.publish import messages
@@ -42,7 +42,7 @@ def test_snapshot_of_a_watching_loop_obeys_the_schema_and_is_complete(scenario: 
     found = document(scenario.watching())
     assert (found["state"], found["loop"], found["reason"]) == ("watching", "belt", "asked")
     assert found["structure"] == scenario.structure
-    assert tuple(found["quantities"]) == tuple(found["baseline"]["quantities"]) == NAMES[found["order"]]
+    assert tuple(found["quantities"]) == tuple(found["baseline"]["quantities"]) == names_of(found["order"], 1)
     assert set(found["change"]) == {f"{name}_pct" for name in found["quantities"]}
     p = len(found["parameters"]["names"])
     assert np.shape(found["parameters"]["values"]) == (p,)

@@ -14,11 +14,11 @@ from scipy.signal import lfilter  # type: ignore[import-untyped]
 from rtid.identify.equation_error import EquationError
 from rtid.identify.output_error import OutputError
 from rtid.identify.structure import Fit, Structure
-from rtid.model.quantities import NAMES, quantities, units_of, unknown
+from rtid.model.quantities import names_of, quantities, units_of, unknown
 from rtid.report import Quantity
 
 PERIOD = 0.5
-UNITS = units_of("V", "rad/s")
+UNITS = units_of(["V"], "rad/s")
 ONE = OutputError(1, PERIOD, (0.0, 5.0))
 TWO = OutputError(2, PERIOD, (0.0, 5.0))
 ARX = EquationError(1, PERIOD, (0.0, 5.0))
@@ -55,7 +55,7 @@ def known(quantity: Quantity) -> tuple[float, float, float, float]:
 
 def test_values_and_limits_of_order_1_by_hand() -> None:
     now = found(ONE, one())
-    assert tuple(now) == NAMES[1]
+    assert tuple(now) == names_of(1, 1)
     e = NORMAL_95
     expected = {
         "gain": (2.0, 0.02, 2.0 * math.exp(-0.01 * e), 2.0 * math.exp(0.01 * e)),
@@ -77,7 +77,7 @@ def test_the_offset_is_the_output_at_input_zero_and_counts_the_gains_error() -> 
 def test_values_of_order_2_by_hand() -> None:
     now = found(TWO, two(1.25))
     values = {name: quantity.value for name, quantity in now.items()}
-    assert tuple(now) == NAMES[2]
+    assert tuple(now) == names_of(2, 1)
     assert values == pytest.approx(
         {"gain": 2.0, "natural_frequency": 0.2, "damping_ratio": 1.25, "time_constant_1": 10.0, "time_constant_2": 2.5,
          "dead_time": 1.5, "offset": 12.0, "noise": 0.3}
@@ -185,8 +185,8 @@ def test_the_error_of_the_noise_is_the_spread_of_its_estimates() -> None:
 
 @pytest.mark.parametrize("order", [1, 2])
 def test_unknown_quantities_have_all_names_and_units(order: int) -> None:
-    nothing = unknown(order, UNITS)
-    assert tuple(nothing) == NAMES[order]
+    nothing = unknown(names_of(order, 1), UNITS)
+    assert tuple(nothing) == names_of(order, 1)
     assert all(q == Quantity(None, None, None, None, UNITS[name]) for name, q in nothing.items())
 
 
@@ -195,6 +195,6 @@ def test_unknown_quantities_have_all_names_and_units(order: int) -> None:
     [("V", "rad/s", "rad/s/V", "rad/s"), ("", "degC", "degC/1", "degC"), ("%", "", "1/%", "1"), ("", "", "1", "1")],
 )
 def test_units(input_unit: str, output_unit: str, gain: str, offset: str) -> None:
-    units = units_of(input_unit, output_unit)
+    units = units_of([input_unit], output_unit)
     assert (units["gain"], units["offset"], units["noise"], units["dead_time"]) == (gain, offset, offset, "s")
-    assert set(units) == {*NAMES[1], *NAMES[2]}
+    assert set(units) == {*names_of(1, 1), *names_of(2, 1)}
