@@ -34,16 +34,11 @@ def _always(_: object) -> bool:
     return True
 
 
-def _several(content: Content) -> bool:
-    return isinstance(content, tuple) and len(content) > 1
-
-
 REFUSED = (
     Refused("loops.*.model.structure", lambda c: c == "physical", "physical", "use output_error or equation_error"),
     Refused("loops.*.model.balance", _always, "a physical balance", "use output_error or equation_error, with inputs"),
     Refused("loops.*.model.filter_s", _always, "the filter of a physical balance", "remove it"),
     Refused("loops.*.model.integrating", lambda c: c is True, "integrating: true", "use a loop whose output settles"),
-    Refused("loops.*.inputs", _several, "a second input", "give one input"),
     Refused("loops.*.operating_point", _always, "a baseline per region", "remove it, or gate with active_when"),
     Refused("loops.*.baseline.automatic", lambda c: c is False, "automatic: false", "let it be learnt from the data"),
     Refused("loops.*.baseline.known", _always, "a known baseline", "let it be learnt: automatic: true"),

@@ -66,12 +66,15 @@ def _loop(entry: Entry, name: str, known: tuple[str, ...]) -> Loop:
     output = section.need("output", signal)
     if output in inputs:
         section.at("output").refuse(f"{output} is an input as well; expected the measured value it acts on")
+    told = model(section.part("model"), period_s)
+    if len(inputs) > 1 and told.structure == "equation_error":
+        section.at("inputs").refuse("equation_error takes one input in this version; use output_error for several")
     return Loop(
         name=name,
         inputs=inputs,
         output=output,
         period_s=period_s,
-        model=model(section.part("model"), period_s),
+        model=told,
         memory_s=section.get("memory_s", seconds(least=period_s), 1000 * period_s),
         stale_after_s=section.get("stale_after_s", seconds(least=period_s), max(5 * period_s, 5.0)),
         baseline=baseline(section.part("baseline"), period_s),
@@ -88,6 +91,8 @@ def _inputs(signal: Kind[str]) -> Kind[tuple[str, ...]]:
 
     def take(entry: Entry) -> tuple[str, ...]:
         names = tuple(signal(each) for each in elements(entry, expected))
+        if len(set(names)) < len(names):
+            entry.refuse("found one signal twice; expected each input once")
         return names or entry.refuse(f"found an empty list; expected {expected}")
 
     return Kind(expected, take)

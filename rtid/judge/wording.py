@@ -39,6 +39,10 @@ def _figure(quantity: Quantity) -> str:
 
 
 def quantity_name(name: str) -> str:
+    """As a person says it; the later inputs' quantities by the number of their input."""
+    kind, _, number = name.rpartition("_")
+    if kind in ("gain", "dead_time") and number.isdigit():
+        return f"{kind.replace('_', ' ')} of input {number}"
     return _NAMES.get(name, name.replace("_", " "))
 
 
@@ -52,8 +56,14 @@ def drift_text(change: QuantityChange, baseline_stamp: float) -> str:
     return (
         f"{_amount(change)} (95 % limits {change.low_pct:+.1f} … {change.high_pct:+.1f} %), beyond the tolerance of "
         f"{change.tolerance_pct:.0f} %, against the baseline of {date(baseline_stamp)}. "
-        f"{_LOOK_FIRST[change.name]} {CAUTION}"
+        f"{_look_first(change.name)} {CAUTION}"
     )
+
+
+def _look_first(name: str) -> str:
+    if name in _LOOK_FIRST:
+        return _LOOK_FIRST[name]
+    return f"Look first at the measured disturbance of {quantity_name(name)}: its instrument and its way into the plant."
 
 
 def shift_text(change: QuantityChange | None, baseline_stamp: float) -> str:

@@ -330,7 +330,7 @@ NOT_YET = [
         seen=False,
     ),
     in_loop("baseline: {known: {gain: 2}}", "22: loops.belt.baseline.known: a known baseline is not in this version"),
-    Mistake("[drive.volts]", "[drive.volts, drive.speed]", "19: loops.belt.inputs: a second input is not in this"),
+    Mistake("[drive.volts]", "[drive.volts, drive.volts]", "19: loops.belt.inputs: found one signal twice", seen=False),
 ]
 
 MISTAKES = [*YAML_ITSELF, *WHOLE, *BROKER, *SOURCES, *SIGNALS, *LOOPS, *NOT_YET]
