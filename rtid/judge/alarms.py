@@ -161,9 +161,10 @@ class AlarmBook(Kept):
         elif event.transition == "acknowledged":
             entry.acknowledged = True
             entry.active = replace(entry.active, acknowledged=True) if entry.active else None
-        else:
-            for_s = (event.detail or {}).get("for_s", 0.0)
-            entry.shelved_until = event.time_s + for_s if event.transition == "shelved" else None
+        elif event.transition == "shelved":
+            entry.shelved_until = event.time_s + (event.detail or {}).get("for_s", 0.0)
+        else:  # where it stands, `active` comes next
+            entry.shelved_until, entry.active = None, None
         waits = entry.raised and not entry.acknowledged
         if entry.active is None and entry.shelved_until is None and (not waits or event.transition == "unshelved"):
             del self._entries[key]

@@ -63,7 +63,7 @@ def drift_text(change: QuantityChange, baseline_stamp: float) -> str:
 def _look_first(name: str) -> str:
     if name in _LOOK_FIRST:
         return _LOOK_FIRST[name]
-    return f"Look first at the measured disturbance of {quantity_name(name)}: its instrument and its way into the plant."
+    return f"Look first at the disturbance of {quantity_name(name)}: its instrument and its way into the plant."
 
 
 def shift_text(change: QuantityChange | None, baseline_stamp: float) -> str:
