@@ -38,3 +38,13 @@ def test_nothing_lost_says_nothing(caplog: pytest.LogCaptureFixture) -> None:
     with caplog.at_level(logging.WARNING):
         Complaints({"drive": Counts()}).look(0.0)
     assert lines(caplog) == []
+
+
+def test_what_was_said_is_not_said_again_after_a_new_configuration(caplog: pytest.LogCaptureFixture) -> None:
+    stays, gone = Counts(dropped=3), Counts(dropped=4)
+    complaints = Complaints({"drive": stays, "hall": gone})
+    with caplog.at_level(logging.WARNING):
+        complaints.look(0.0)
+        complaints.follow({"drive": stays, "hall": Counts(dropped=1)})
+        complaints.look(20.0)
+    assert [line.partition(":")[0] for line in lines(caplog)] == ["drive", "hall", "hall"]

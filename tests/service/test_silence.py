@@ -25,3 +25,11 @@ def test_a_reading_ends_the_silence() -> None:
     watch.heard("belt", 9.0)
     assert watch.due(10.0) == []
     assert watch.due(14.0) == [("belt", 5.0)]
+
+
+def test_another_configuration_keeps_the_times_of_the_loops_that_stay() -> None:
+    watch = SilenceWatch({"belt": 5.0, "oven": 60.0}, now=0.0)
+    watch.follow({"belt": 8.0, "mill": 5.0}, now=4.0)
+    assert watch.due(7.9) == []
+    assert watch.due(8.0) == [("belt", 8.0)]
+    assert watch.due(9.0) == [("mill", 5.0)]

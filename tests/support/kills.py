@@ -7,6 +7,7 @@ import random
 import signal
 import socket
 import threading
+from collections import Counter
 from dataclasses import dataclass, field, replace
 from pathlib import Path
 from typing import Any
@@ -78,6 +79,25 @@ def story(events: list[dict[str, Any]]) -> list[str]:
         for event in told
         if event.get("alarm") not in _OF_A_GAP and event["transition"] != "updated"
     ]
+
+
+def faults(outcome: Outcome, expected: list[str]) -> list[str]:
+    """What is lost, twice or wrong; `expected` is the story without kills."""
+    events = outcome.events
+    made = Counter(event["text"] for event in events if event.get("action") == "note")
+    found = {
+        "the numbers of the events have a hole": [e["sequence"] for e in events] != list(range(1, len(events) + 1)),
+        f"the story is {story(events)}, not {expected}": story(events) != expected,
+        "a confirmed remark is lost": any(made[text] == 0 for text in outcome.answered),
+        "a remark stands twice": any(times > 1 for times in made.values()),
+        "a remark stands that nobody made": any(text not in outcome.asked for text in made),
+        "hardly any remark was confirmed": len(outcome.answered) < 50,
+        "the service ended with a traceback": any("Traceback" in line for line in outcome.stderr),
+        "a state file did not verify": any("is set aside" in line for line in outcome.stderr),
+        "the state was older than the event list": any("are taken from there" in line for line in outcome.stderr),
+        f"the last run ended with exit code {outcome.exit_code}": outcome.exit_code != 0,
+    }
+    return [text for text, present in found.items() if present]
 
 
 def uninterrupted(folder: Path, sent: list[bytes]) -> list[str]:
