@@ -25,7 +25,7 @@ Subject = tuple[str, str | None]  # alarm and signal
 
 
 class LoopMemory:
-    """`restore`, then `recall`; afterwards `note` every event and `save`.
+    """`restore` and `catch_up`, or `take_over`; afterwards `note` every event and `save`.
 
     `sequence` is the number of the last event that the state knows, `pending` the events that may not have reached the
     list when it was saved, `told` the message that is kept of each alarm ever told; None: emptied.
@@ -41,39 +41,37 @@ class LoopMemory:
         self.sequence = 0
         self.pending: list[Event] = []
         self.told: dict[Subject, Event | None] = {}
+        self._refusal = ""  # why the state is not gone on from
 
-    def restore(self, stamp: float) -> list[Transition]:
-        """Go on from the newest state that verifies; what is to be told when it is that of another plant."""
+    def restore(self) -> None:
+        """Go on from the newest state that verifies."""
         try:
             if self._store.restore(self._take) is None:
                 self.loop.skip_baselines(self._baselines.last_number)
         except ActionRefused as refusal:
-            return self._begin_anew(str(refusal), stamp)
-        return []
+            self._refusal = str(refusal)
 
     def take_over(self, before: LoopMemory, stamp: float) -> list[Transition]:
-        """Go on from the same loop under other settings; what is to be told when it is another plant now."""
+        """Go on from the same loop under other settings; what is to be told about a plant that ended."""
         try:
             self._take(before.body(before.sequence, before.pending))
         except ActionRefused as refusal:
             self._store.keep_old(self._store.present)
-            return self._begin_anew(str(refusal), stamp)
+            self._refusal = str(refusal)
+            return self._begin_anew([], stamp)
         return []
 
-    def recall(self, events: Sequence[Event], stamp: float) -> None:
-        """Catch up with the events of this loop that are newer than its state."""
-        last_break = max((i for i, event in enumerate(events) if event.get("action") == ANEW), default=-1)
-        for event in events[last_break + 1 :]:
-            try:
-                self._recall(transition_of(event), event)
-            except (KeyError, TypeError, ValueError) as error:
-                log.warning("%s: event %s passed over (%s)", self._settings.name, event["sequence"], error)
-        if events:
-            self._say_recalled(len(events) - last_break - 1)
-            standing = self.loop.open_alarms
-            self.told = {subject: told if subject in standing else None for subject, told in self.told.items()}
+    def catch_up(self, events: Sequence[Event], stamp: float) -> list[Transition]:
+        """Take in the events of this loop that are newer than its state; what is to be told about a plant that ended.
+
+        Where the state is that of another plant the loop learns anew.
+        """
+        if self._refusal:
+            return self._begin_anew(events, stamp)
+        self._recall_all(events)
         if events or self.loop.report is not None:
             self.loop.restarted(stamp)
+        return []
 
     def note(self, transition: Transition, event: Event) -> None:
         """Remember what the broker is told of an alarm."""
@@ -115,12 +113,25 @@ class LoopMemory:
         self.sequence, self.pending, self.told = sequence, pending, told
         return True
 
-    def _begin_anew(self, why: str, stamp: float) -> list[Transition]:
+    def _begin_anew(self, events: Sequence[Event], stamp: float) -> list[Transition]:
         self.loop.skip_baselines(self._baselines.last_number)
+        self.told |= {(event["alarm"], event["signal"]): event for event in events if "alarm" in event}
         void = [event for event in self.told.values() if event is not None and event["transition"] != "cleared"]
         self.told = dict.fromkeys(self.told)
-        anew = Transition(None, None, "low", why, stamp, stamp, action=ANEW)
+        anew = Transition(None, None, "low", self._refusal, stamp, stamp, action=ANEW)
         return [*(_voided(transition_of(event), stamp) for event in void), anew]
+
+    def _recall_all(self, events: Sequence[Event]) -> None:
+        last_break = max((i for i, event in enumerate(events) if event.get("action") == ANEW), default=-1)
+        for event in events[last_break + 1 :]:
+            try:
+                self._recall(transition_of(event), event)
+            except (KeyError, TypeError, ValueError) as error:
+                log.warning("%s: event %s passed over (%s)", self._settings.name, event["sequence"], error)
+        if events:
+            self._say_recalled(len(events) - last_break - 1)
+            standing = self.loop.open_alarms
+            self.told = {subject: told if subject in standing else None for subject, told in self.told.items()}
 
     def _recall(self, event: Transition, told: Event) -> None:
         identity = (event.detail or {}).get("baseline")
@@ -137,7 +148,8 @@ class LoopMemory:
 
     def _say_recalled(self, count: int) -> None:
         has = f"baseline {self.loop.baseline}" if self.loop.baseline else "no baseline, it learns anew"
-        log.warning(
+        log.log(
+            logging.INFO if self.loop.baseline else logging.WARNING,
             "%s: the state is older than the event list: %d events are taken from there (%s)",
             self._settings.name, count, has,
         )  # fmt: skip

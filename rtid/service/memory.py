@@ -1,12 +1,14 @@
 """What the service keeps on the disk of all its loops, and in which order: what is told was saved before.
 
 An event gets its number, then the state that knows of it is saved with the event in it, then the event list is
-written, then the world is told. A kill between any two of these loses nothing and repeats nothing.
+written, then the world is told. A kill between any two of these loses nothing and repeats nothing. For a flood of
+alarms of the data only the event list is written: flash memory wears out.
 """
 
 from __future__ import annotations
 
 import time
+from collections import defaultdict
 from collections.abc import Iterable, Mapping, Sequence
 from dataclasses import dataclass
 from pathlib import Path
@@ -21,6 +23,12 @@ from rtid.service.loop_memory import LoopMemory, Subject
 
 SAVE_EVERY_S = 300.0  # flash memory wears out
 RETRY_S = 10.0  # while the disk refuses
+FLOOD_S = 60.0  # between two saves for alarms of the data, which come in floods from a bad line
+
+# What these say is all in the event list; a state that does not know of them yet catches up from there.
+OF_THE_DATA = frozenset({
+    "data_gap", "data_stale", "out_of_range", "frozen_signal", "saturated", "outliers", "timing",
+})  # fmt: skip
 
 _EVENTS = ""  # the event list among the names of loops
 
@@ -45,6 +53,7 @@ class Memory:
         self._node = node
         self._loops: dict[str, LoopMemory] = {}
         self._due: dict[str, float] = {}
+        self._saved_at: dict[str, float] = defaultdict(lambda: -FLOOD_S)
         self._failures: dict[str, str] = {}
         self._retry_at = 0.0
         self.events = EventLog(folder / "events.jsonl")
@@ -57,17 +66,20 @@ class Memory:
     def restore(self, told: Iterable[settings.Loop], stamp: float) -> list[Remembered]:
         """These loops as they were, caught up with the event list; its missing events are written."""
         fresh = {loop.name: LoopMemory(self._folder, loop) for loop in told}
-        news = {name: memory.restore(stamp) for name, memory in fresh.items()}
+        for memory in fresh.values():
+            memory.restore()
         pending = [event for memory in fresh.values() for event in memory.pending]
         self.events.recover(pending, last=max((memory.sequence for memory in fresh.values()), default=0))
         self._write_events()
         newer = self.events.after(min((memory.sequence for memory in fresh.values()), default=0))
-        for name, memory in fresh.items():
-            if not news[name]:
-                memory.recall([e for e in newer if e["loop"] == name and e["sequence"] > memory.sequence], stamp)
         self._loops |= fresh
         self._due |= dict.fromkeys(fresh, 0.0)  # at once: a start shows whether the disk takes it
-        return [Remembered(memory.loop, memory.grid, tuple(news[name])) for name, memory in fresh.items()]
+        remembered = []
+        for name, memory in fresh.items():
+            own = [event for event in newer if event["loop"] == name and event["sequence"] > memory.sequence]
+            news = memory.catch_up(own, stamp)
+            remembered.append(Remembered(memory.loop, memory.grid, tuple(news)))
+        return remembered
 
     def change(self, told: settings.Loop, stamp: float) -> Remembered:
         """A loop under other settings; it goes on unless it is another plant now."""
@@ -90,7 +102,8 @@ class Memory:
         if events and loop in self._loops:
             for transition, event in zip(transitions, events, strict=True):
                 self._loops[loop].note(transition, event)
-            self._save(loop)
+            if time.monotonic() - self._saved_at[loop] >= FLOOD_S or not _of_the_data(transitions):
+                self._save(loop)
         if events:
             self._write_events()
         return events
@@ -126,6 +139,7 @@ class Memory:
             self._fail(loop, error)
         else:
             self._failures.pop(loop, None)
+            self._saved_at[loop] = time.monotonic()
 
     def _write_events(self) -> None:
         try:
@@ -139,3 +153,8 @@ class Memory:
         if not self._failures:
             self._retry_at = time.monotonic() + RETRY_S
         self._failures[what] = str(error)
+
+
+def _of_the_data(transitions: Iterable[Transition]) -> bool:
+    """Nothing but alarms of the data coming and going by themselves."""
+    return all(t.alarm in OF_THE_DATA and t.transition in ("active", "updated", "cleared") for t in transitions)

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import logging
 import shutil
 from collections.abc import Mapping
 from dataclasses import replace
@@ -134,7 +135,7 @@ def test_a_baseline_that_is_killed_at_any_step_is_accepted_once(tmp_path: Path, 
                     feed(parts, [ROWS[fed]])
         except Killed:
             killed += 1
-            parts = start_in_spite_of_kills(folder, node)
+            parts = start(folder, node)
             check_list(folder, told)
         feed(parts, ROWS[fed + 1 : LEARNT + 400])
         found = check_list(folder, told)  # the rows between save and kill are a gap
@@ -174,6 +175,7 @@ def test_an_older_state_catches_up_with_the_event_list(
     tmp_path: Path, learning: Path, caplog: pytest.LogCaptureFixture
 ) -> None:
     """The present file is damaged and the one before knows neither baseline nor actions."""
+    caplog.set_level(logging.INFO)
     folder, node = tmp_path / "state", node_in(tmp_path, alarms={"data_gap": AlarmSetting(latching=True)})
     shutil.copytree(learning, folder)
     early = (folder / "loops" / "belt.json").read_bytes()
@@ -200,6 +202,21 @@ def test_an_older_state_catches_up_with_the_event_list(
     ]  # fmt: skip
     assert "is set aside" in caplog.text
     assert "5 events are taken from there (baseline belt-1)" in caplog.text
+
+
+def test_a_flood_of_gaps_is_in_the_event_list_and_not_in_a_flood_of_states(tmp_path: Path, watching: Path) -> None:
+    folder, node = tmp_path / "state", node_in(tmp_path)
+    shutil.copytree(watching, folder)
+    parts = start(folder, node)
+    before = (folder / "loops" / "belt.json").read_bytes()
+    for gap in range(1, 6):
+        feed(parts, readings(32, first=LEARNT + 100 * gap))
+    assert (folder / "loops" / "belt.json").read_bytes() == before
+    found = check_list(folder, Told())
+    assert found[:3] == ["baseline", "data_gap active", "data_gap cleared"]
+    again = start(folder, node)
+    feed(again, readings(32, first=LEARNT + 600))
+    assert check_list(folder, Told()) == [*found, "data_gap active", "data_gap cleared"]
 
 
 def test_a_lost_state_is_made_anew_from_events_and_baselines(tmp_path: Path, watching: Path) -> None:

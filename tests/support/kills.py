@@ -27,7 +27,7 @@ CHANGE = 8000  # the row at which the plant's gain changes
 KEPT_BACK = 2500  # rows that only the last run is given, which nobody kills
 UNDISTURBED = slice(CHANGE - 3000, CHANGE + 1000)  # rows that tell the whole story when nobody interrupts
 BURST, PAUSE_S = 8, 0.006  # rows that are sent together, and the time between
-ALIVE_S = (0.0, 0.6)  # from the open port to the kill
+ALIVE_S = (0.0, 0.4)  # from the open port to the kill
 AT_START = 0.2  # share of the kills while the service starts
 
 CONFIGURATION = """\
@@ -94,7 +94,6 @@ def faults(outcome: Outcome, expected: list[str]) -> list[str]:
         "hardly any remark was confirmed": len(outcome.answered) < 50,
         "the service ended with a traceback": any("Traceback" in line for line in outcome.stderr),
         "a state file did not verify": any("is set aside" in line for line in outcome.stderr),
-        "the state was older than the event list": any("are taken from there" in line for line in outcome.stderr),
         f"the last run ended with exit code {outcome.exit_code}": outcome.exit_code != 0,
     }
     return [text for text, present in found.items() if present]
