@@ -15,7 +15,7 @@ from rtid.identify.record import Record
 from rtid.identify.recursion import all_pole
 from rtid.identify.simulated import Plant, run_record
 from rtid.identify.structure import Fit
-from rtid.identify.whitening import LONG_RUN_LAGS, Whitener, autocovariance, autoregression, long_run_ratio
+from rtid.identify.whitening import LONG_RUN_LAGS, MAX_ORDER, Whitener, autocovariance, autoregression, long_run_ratio
 
 Array = NDArray[np.float64]
 Mask = NDArray[np.bool_]
@@ -66,8 +66,12 @@ class RecordFit:
         return Point(fit, states, residual, e, phi, good, _huber_loss(e[good], fit.sigma))
 
     def polish(self, fit: Fit, *, rounds: int = 6, steps: int = 12) -> Point:
-        """Converge from `fit`. `rounds` renew the noise model, each with at most `steps` iterations."""
-        now = self.point(fit, np.zeros(self._nuisances))
+        """Converge from `fit`. `rounds` renew the noise model, each with at most `steps` iterations.
+
+        The first steps take the noise for white: a coloured model found far off would whiten the misfit away.
+        """
+        now = self._renew_noise(self.point(fit, np.zeros(self._nuisances)), orders=0)
+        now = self._descend(now, steps)
         for _ in range(rounds):
             now = self._renew_noise(now)
             before = now.fit.theta
@@ -106,11 +110,11 @@ class RecordFit:
         later = np.concatenate(([0.0], response[:-1]))
         return np.column_stack((response, later)[: self.plant.order])
 
-    def _renew_noise(self, point: Point) -> Point:
+    def _renew_noise(self, point: Point, *, orders: int = MAX_ORDER) -> Point:
         rows = float(point.ok.sum())
         limit = HUBER * 1.4826 * float(np.median(np.abs(point.residual[point.ok]))) if rows else 0.0
         clipped = np.clip(point.residual, -limit, limit) if limit > 0 else point.residual
-        covariance = autocovariance(np.where(point.ok, clipped, 0.0), point.ok)
+        covariance = autocovariance(np.where(point.ok, clipped, 0.0), point.ok, orders)
         noise = float(np.sqrt(covariance[0]))
         fit = replace(point.fit, ar=autoregression(covariance, rows), noise=noise, noise_rows=rows)
         whitened = self.point(fit, point.states)
