@@ -217,7 +217,7 @@ class Loop(Kept):
         gap = rows.restart or rows.gap_s > 0.0
         self._knowledge.broken = self._knowledge.broken or gap
         text = wording.restart_text() if rows.restart else wording.gap_text(rows.gap_s)
-        self._book.note("data_gap", Finding(gap, text), time_s=now.time_s, stamp=now.stamp)
+        self._book.note("data_gap", Finding(True, text) if gap else Finding(False), time_s=now.time_s, stamp=now.stamp)
 
     def _do(self, action: Action, now: _Moment) -> str:
         """hold, resume, rebaseline, restore, note; what the event says."""

@@ -33,6 +33,7 @@ _LOG_STEP = 0.3
 _SWELL = 1.5  # of the usual deviation: a residual that swells more shows a change of the plant and not the noise
 _WILD = 5.0  # deviations of the noise
 _SHORTEST = 64  # rows
+_FAINT = 1e-6  # of the prior's information: what no datum has told yet stays invertible
 _RENEW_EVERY = 8  # blocks between two noise models
 
 
@@ -101,8 +102,10 @@ class FollowingEstimator(Kept):
 
     def _start_information(self) -> SubspaceForgetting:
         information = np.asarray(np.linalg.inv(self._covariance + 1e-18 * np.eye(len(self._free))), dtype=np.float64)
+        prior = self._prior[self._free]
+        information += _FAINT * np.diag(1.0 / prior**2)
         share = min(1.0, self._memory / max(1, self._fit.rows))
-        return SubspaceForgetting(information, share * information, self._prior[self._free])
+        return SubspaceForgetting(information, share * information, prior)
 
     def _learn(self, e: Array, phi: Array) -> None:
         if len(e) == 0:
