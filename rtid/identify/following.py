@@ -11,6 +11,7 @@ from dataclasses import replace
 import numpy as np
 from numpy.typing import NDArray
 
+from rtid.identify.bounded import bounded_step
 from rtid.identify.forgetting import SubspaceForgetting, informed
 from rtid.identify.gauss_newton import HUBER, SIGMA_FLOOR
 from rtid.identify.record import Record
@@ -134,7 +135,8 @@ class FollowingEstimator(Kept):
         keep = np.eye(len(gain)) - gain @ gained
         understated = long_run_ratio(self._leftover.covariance)
         self._covariance = keep @ self._covariance @ keep.T + understated * (gain @ gained @ gain)
-        return self._limited(np.asarray(gain @ (scaled.T @ unit)))
+        low, high = self._plant.box(self._fit.theta, logarithm=_LOG_STEP, rows=1.0)
+        return bounded_step(self._forgetting.information, scaled.T @ unit, low[self._free], high[self._free])
 
     def _walk(self, rows: int) -> None:
         """The offset is loose: an unmeasured load must not be read as gain."""
@@ -143,10 +145,6 @@ class FollowingEstimator(Kept):
         self._forgetting.loosen(len(self._free) - 1, variance)
         self._covariance = self._covariance.copy()
         self._covariance[-1, -1] += variance
-
-    def _limited(self, step: Array) -> Array:
-        bound = self._plant.step_limit(_LOG_STEP, 1.0)[self._free]
-        return np.asarray(np.minimum(np.maximum(step, -bound), bound))
 
     def _move(self, step: Array) -> None:
         theta = self._fit.theta.copy()

@@ -11,6 +11,7 @@ from dataclasses import dataclass, replace
 import numpy as np
 from numpy.typing import NDArray
 
+from rtid.identify.bounded import bounded_step
 from rtid.identify.record import Record
 from rtid.identify.recursion import all_pole
 from rtid.identify.simulated import Plant, run_record
@@ -146,10 +147,10 @@ class RecordFit:
 
     def _try(self, now: Point, damping: float) -> Point:
         step = self._step(now, damping)
+        if not np.isfinite(step).all():
+            return replace(now, loss=np.inf)
         p = len(now.fit.theta)
-        limit = self.plant.step_limit(_STEP_LIMIT, 2.0)
-        limited = np.minimum(np.maximum(step[:p], -limit), limit)
-        theta = self.plant.within(now.fit.theta + limited)
+        theta = self.plant.within(now.fit.theta + step[:p])
         return self.point(replace(now.fit, theta=theta), now.states + step[p:])
 
     def _step(self, now: Point, damping: float) -> Array:
@@ -162,8 +163,11 @@ class RecordFit:
         normal = (scaled * weight[:, None]).T @ scaled
         normal[np.diag_indices_from(normal)] *= 1.0 + damping
         normal[np.diag_indices_from(normal)] += SINGULAR
+        anywhere = np.full(self._nuisances, np.inf)
+        low, high = self.plant.box(now.fit.theta, logarithm=_STEP_LIMIT, rows=2.0)
+        low, high = np.concatenate((low, -anywhere))[columns] * scale, np.concatenate((high, anywhere))[columns] * scale
         step = np.zeros(len(columns))
-        step[columns] = np.linalg.solve(normal, scaled.T @ (weight * e)) / scale
+        step[columns] = bounded_step(normal, scaled.T @ (weight * e), low, high) / scale
         return step
 
 

@@ -52,12 +52,15 @@ class Plant:
             self.high[:n] = (60.0, math.log(3.0 / period), math.log(30.0))
         self.low[self.dead_times], self.high[self.dead_times] = self.dead_time
 
-    def step_limit(self, logarithm: float, rows: float) -> Array:
-        """The longest step of logarithms, and of dead times in rows; levels and linear gains have none."""
+    def box(self, theta: Array, *, logarithm: float, rows: float) -> tuple[Array, Array]:
+        """Least and largest step of each parameter from θ: inside the bounds, and no longer than `logarithm` or `rows`.
+
+        Levels and linear gains may go any way.
+        """
         limit = np.full(len(self.names), np.inf)
         limit[: 1 + self.order] = logarithm
         limit[self.dead_times] = rows * self.period
-        return limit
+        return np.maximum(-limit, self.low - theta), np.minimum(limit, self.high - theta)
 
     def prior(self, inputs: Array, output: Array) -> Array:
         """Deviation of each parameter before anything is known; inputs (N, n), output (N,) give the units."""

@@ -13,6 +13,7 @@ from rtid.judge import wording
 from rtid.judge.alarms import AlarmBook, Finding
 from rtid.judge.baseline import PROMISED_ROWS, Baseline, Follower
 from rtid.judge.change import Judged, QuantityChange, leader, surest
+from rtid.judge.rechecking import Rechecking
 from rtid.judge.relearning import Relearning
 from rtid.judge.score import DriftScore
 from rtid.kept import Kept
@@ -30,7 +31,8 @@ class Watch(Kept):
     """One baseline and its detectors."""
 
     KEPT = (
-        "_follower", "_score", "_rows", "_named", "_hint", "_broken", "_blind_rows", "_told", "_within_rows",
+        "_follower", "_score", "_rechecking", "_rows", "_named", "_hint", "_broken",
+        "_blind_rows", "_told", "_within_rows",
     )  # fmt: skip
 
     def __init__(
@@ -53,6 +55,7 @@ class Watch(Kept):
         self._named: str | None = None  # the quantity that `plant_drift` names while it stands
         self._hint = "undecided"  # what `plant_shift` names
         self._relearning: Relearning | None = None  # while a change is flagged
+        self._rechecking = self._new_rechecking()  # while none is
         self._broken = False
         self._blind_rows = 0  # rows for which the data could not have shown a change of the tolerance
         self._told = Finding(False)  # what `plant_drift` says
@@ -136,13 +139,17 @@ class Watch(Kept):
     def _relearn(self, estimator: Estimator, inputs: Array, output: Array, ok: Mask) -> Estimator:
         ratio = self._score.ratio
         if self._relearning is None and ratio >= 1.0:
-            self._relearning = self._new_relearning()
+            self._relearning, self._rechecking = self._new_relearning(), self._new_rechecking()
         elif self._relearning is not None and ratio < _RETURN and self._named is None:
             self._relearning, self._hint = None, "undecided"
-        if self._relearning is not None:
-            estimator = self._relearning.step(estimator, inputs, output, ok, new_stretch=self._broken)
+        keeper = self._relearning or self._rechecking
+        estimator = keeper.step(estimator, inputs, output, ok, new_stretch=self._broken)
         self._broken = False
         return estimator
+
+    def _new_rechecking(self) -> Rechecking:
+        memory = self._settings.memory_s / self._settings.period_s
+        return Rechecking(self._structure, memory=memory, settling=self._structure.settling_rows(self.baseline.fit))
 
     def _new_relearning(self) -> Relearning:
         memory = self._settings.memory_s / self._settings.period_s
