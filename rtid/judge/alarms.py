@@ -173,9 +173,6 @@ class AlarmBook(Kept):
         taken, self._transitions = tuple(self._transitions), []
         return taken
 
-    def is_active(self, alarm: str) -> bool:
-        return any(name == alarm and entry.active is not None for (name, _), entry in self._entries.items())
-
     def active(self) -> tuple[ActiveAlarm, ...]:
         standing = (e for e in self._entries.values() if e.shelved_until is None)
         return tuple(entry.active for entry in standing if entry.active is not None)

@@ -61,18 +61,9 @@ class DriftScore(Kept):
         return float((self._statistics / self._thresholds).max())
 
     @property
-    def statistic(self) -> float:
-        """The statistic of the memory that is nearest to its threshold."""
-        return float(self._statistics[self._leader])
-
-    @property
     def learnt(self) -> Array:
         """What the null has learnt beyond the baseline, (p,)."""
         return self._null
-
-    @property
-    def _leader(self) -> int:
-        return int(np.argmax(self._statistics / self._thresholds))
 
     def step(self, e: Array, phi: Array, *, frozen: bool) -> None:
         """Take in the next rows, e (m,) and φ (m, p); while `frozen` the null learns nothing but the offset."""
