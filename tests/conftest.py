@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import os
+import signal
 from collections.abc import Iterator
 
 import pytest
@@ -11,6 +12,7 @@ from tests.support.broker import Broker, mosquitto
 
 
 def pytest_configure(config: pytest.Config) -> None:
+    signal.signal(signal.SIGINT, signal.default_int_handler)  # a run in the background hands an ignored one to children
     if mosquitto() is None and os.environ.get("CI") == "true":
         raise pytest.UsageError("mosquitto is missing; with CI=true the broker tests may not be skipped: install it")
 
