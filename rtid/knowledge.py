@@ -226,9 +226,12 @@ class Knowledge(Kept):
 
 def structure_of(settings: LoopSettings) -> Structure:
     model = settings.model
+    least = settings.resolutions.get(settings.output, 0.0) / math.sqrt(12.0)  # deviation of rounding to one count
     if model.structure == "equation_error":
-        return EquationError(model.order, settings.period_s, model.dead_time_s)
-    return OutputError(model.order, settings.period_s, model.dead_time_s, inputs=len(settings.inputs))
+        return EquationError(model.order, settings.period_s, model.dead_time_s, least_noise=least)
+    return OutputError(
+        model.order, settings.period_s, model.dead_time_s, inputs=len(settings.inputs), least_noise=least
+    )
 
 
 def tolerances_of(tolerance: Tolerance, inputs: int = 1) -> dict[str, float]:

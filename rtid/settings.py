@@ -234,6 +234,7 @@ class Loop:
     units: dict[str, str] = field(default_factory=dict)  # signal name -> unit
     ranges: dict[str, Range] = field(default_factory=dict)  # signal name -> plausible range
     limits: dict[str, Range] = field(default_factory=dict)  # signal name -> actuator's ends
+    resolutions: dict[str, float] = field(default_factory=dict)  # signal name -> one count
     active_when: Gate | None = None
     tolerance: Tolerance = Tolerance()
     alarm_budget: AlarmBudget = AlarmBudget()

@@ -106,6 +106,7 @@ def _describe(loop: Loop, signals: Mapping[str, Signal]) -> Loop:
         units={signal.name: signal.unit for signal in own},
         ranges={signal.name: signal.plausible for signal in own if signal.plausible is not None},
         limits={signal.name: signal.limits for signal in own if signal.limits is not None},
+        resolutions={signal.name: signal.resolution for signal in own if signal.resolution is not None},
     )
 
 

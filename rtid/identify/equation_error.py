@@ -66,7 +66,10 @@ class Regressors(Kept):
 class EquationError:
     """`structure.Structure` for ARX models of order 1 or 2."""
 
-    def __init__(self, order: int, period: float, dead_time: tuple[float, float]) -> None:
+    def __init__(
+        self, order: int, period: float, dead_time: tuple[float, float], *, least_noise: float = 0.0
+    ) -> None:
+        self.least_noise = least_noise  # deviation below which the output cannot be read
         self.order = order
         self.period = period
         least, most = round(dead_time[0] / period), round(dead_time[1] / period)
@@ -77,13 +80,13 @@ class EquationError:
     def first_fit(self, record: Record) -> Fit | None:
         if len(record) < MIN_ROWS:
             return None
-        fit = fit_of(self._stack(record)[0], self.delays, record.inputs.mean(axis=0))
+        fit = self._fit(record)
         told = [np.isfinite(fit.covariance).all(), fit.rows >= MIN_ROWS // 2]
         return fit if all(told) and _log_gain_error(fit, self.order) < START_ERROR else None
 
     def refit(self, record: Record, fit: Fit, *, thorough: bool = False, moving: bool = False) -> Fit:
         """Least squares has one minimum, and the measured output carries the level: both choices change nothing."""
-        return fit_of(self._stack(record)[0], self.delays, record.inputs.mean(axis=0))
+        return self._fit(record)
 
     def run(self, record: Record, fit: Fit) -> tuple[Array, Array, Mask, EquationPredictor]:
         predictor = EquationPredictor(self, fit)
@@ -118,6 +121,10 @@ class EquationError:
         n = self.order
         return [(np.concatenate(([0.0], fit.theta[n : 2 * n])), np.concatenate(([1.0], fit.theta[:n])), fit.delay)]
 
+    def _fit(self, record: Record) -> Fit:
+        stack, centre = self._stack(record)[0], record.inputs.mean(axis=0)
+        return fit_of(stack, self.delays, centre, least_noise=self.least_noise)
+
     def _prior(self, record: Record) -> Array:
         """Prior deviation of every parameter, per unit of output: far beyond anything that a record can show."""
         output, drive = _size(record.output[np.isfinite(record.output)]), _size(record.inputs[:, 0])
@@ -135,12 +142,14 @@ class EquationError:
         return stack, regressors
 
 
-def fit_of(stack: LeastSquaresStack, delays: tuple[int, ...], centre: Array) -> Fit:
+def fit_of(
+    stack: LeastSquaresStack, delays: tuple[int, ...], centre: Array, *, least_noise: float = 0.0
+) -> Fit:
     """The best candidate of a stack, with the covariance of least squares and the dead time's posterior deviation."""
     sums = stack.residual_sum()
     best = int(np.argmin(sums))
     freedom = max(1.0, stack.weight - stack.p)
-    variance = max(float(sums[best]) / freedom, 1e-24)
+    variance = max(float(sums[best]) / freedom, least_noise**2, 1e-24)
     evidence = np.exp(-0.5 * np.minimum((sums - sums[best]) / variance, 1400.0))
     spread = float(np.sqrt((evidence * (np.array(delays) - delays[best]) ** 2).sum() / evidence.sum() + 1.0 / 12.0))
     sigma = math.sqrt(variance)
@@ -228,7 +237,8 @@ class BankEstimator(Kept):
         self._renew()
 
     def _renew(self) -> None:
-        fit = fit_of(self._stack, self._structure.delays, self._fit.centre)
+        least = self._structure.least_noise
+        fit = fit_of(self._stack, self._structure.delays, self._fit.centre, least_noise=least)
         best = self._structure.delays.index(fit.delay)
         inverse = self._stack.inverse(best)
         covariance = fit.sigma**2 * inverse @ self._squares[best] @ inverse

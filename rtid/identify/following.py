@@ -72,7 +72,7 @@ class FollowingEstimator(Kept):
     def step(self, inputs: Array, output: Array, ok: Mask) -> tuple[Array, Array, Mask]:
         """Learn from the next m rows: residuals e (one step) and ε (simulated) before learning, rows that count."""
         residual, psi, ok = self._predictor.run(inputs, output, ok)
-        bound = _WILD * (self._fit.noise + self._floor)
+        bound = _WILD * max(self._fit.noise, self._floor)
         e, phi, good = self._whitener.run(np.clip(residual, -bound, bound), psi, ok)  # no echo of one wild row
         self._learn(e[good], phi[good][:, self._free])
         if good.any():
@@ -159,7 +159,7 @@ class FollowingEstimator(Kept):
     def _learn_noise(self, residual: Array, e: Array, rows: float) -> None:
         self._weight = min(self._memory, self._weight + rows)
         keep = 1.0 - min(1.0, rows / self._weight)
-        usual = float(np.sqrt(self._noise.covariance[0])) + self._floor
+        usual = max(float(np.sqrt(self._noise.covariance[0])), self._floor)
         present = float(np.sqrt(residual @ residual / rows))
         tamed = np.clip(residual, -4.0 * usual, 4.0 * usual) * min(1.0, _SWELL * usual / max(present, 1e-300))
         self._noise.add(tamed, keep=keep, rows=rows)
@@ -178,4 +178,4 @@ class FollowingEstimator(Kept):
 
     @property
     def _floor(self) -> float:
-        return max(SIGMA_FLOOR * self._spread, 1e-12)
+        return max(SIGMA_FLOOR * self._spread, self._plant.least_noise, 1e-12)

@@ -125,7 +125,7 @@ class RecordFit:
 
     def _sigma(self, e: Array) -> float:
         robust = 1.4826 * float(np.median(np.abs(e))) if len(e) else 0.0
-        return max(robust, SIGMA_FLOOR * self.spread, 1e-12)
+        return max(robust, SIGMA_FLOOR * self.spread, self.plant.least_noise, 1e-12)
 
     def _descend(self, now: Point, steps: int) -> Point:
         damping = 1e-3

@@ -29,10 +29,15 @@ _NEIGHBOURS = (-1.0, -0.5, 0.5, 1.0)  # rows: the loss has a local minimum in ev
 
 
 class OutputError:
-    """`structure.Structure` for simulated models of order 1 or 2 with one or several inputs."""
+    """`structure.Structure` for simulated models of order 1 or 2 with one or several inputs.
 
-    def __init__(self, order: int, period: float, dead_time: tuple[float, float], *, inputs: int = 1) -> None:
-        self._plant = Plant(order, period, dead_time, inputs=inputs)
+    `least_noise`: deviation below which the output cannot be read, in its unit.
+    """
+
+    def __init__(
+        self, order: int, period: float, dead_time: tuple[float, float], *, inputs: int = 1, least_noise: float = 0.0
+    ) -> None:
+        self._plant = Plant(order, period, dead_time, inputs=inputs, least_noise=least_noise)
         self.names = self._plant.names
         self.period = period
 

@@ -26,11 +26,14 @@ class Plant:
     are linear, for they may be nothing; all inputs share the shape.
     """
 
-    def __init__(self, order: int, period: float, dead_time: tuple[float, float], *, inputs: int = 1) -> None:
+    def __init__(
+        self, order: int, period: float, dead_time: tuple[float, float], *, inputs: int = 1, least_noise: float = 0.0
+    ) -> None:
         self.order = order
         self.period = period
         self.dead_time = dead_time
         self.inputs = inputs
+        self.least_noise = least_noise  # deviation below which the output cannot be read
         self.depth = math.ceil(dead_time[1] / period) + 1
         later = range(2, inputs + 1)
         pairs = [name for i in later for name in (f"gain_{i}", f"dead_time_{i}")]

@@ -177,6 +177,7 @@ def loops(draw: st.DrawFn, name: str, source: Source, every_s: float) -> Loop:
         units={signal.name: signal.unit for signal in own},
         ranges={signal.name: signal.plausible for signal in own if signal.plausible},
         limits={signal.name: signal.limits for signal in own if signal.limits},
+        resolutions={signal.name: signal.resolution for signal in own if signal.resolution},
     )
 
 
@@ -245,7 +246,7 @@ def _signal(written: dict[str, Any]) -> dict[str, Any]:
 
 def _loop(loop: Loop) -> dict[str, Any]:
     written: dict[str, Any] = _plain(loop)
-    for key in ("name", "units", "ranges", "limits", "publish_every_s"):
+    for key in ("name", "units", "ranges", "limits", "resolutions", "publish_every_s"):
         del written[key]
     if loop.active_when:
         conditions = written["active_when"].pop("conditions")
